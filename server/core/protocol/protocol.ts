@@ -1,0 +1,164 @@
+/**
+ * The shape of a protocol document, as plain types, so that the core can check, hand out and
+ * analyse without knowing HTTP. The zod schema in `server/studies/schemas.ts` parses incoming JSON
+ * into exactly this type; a compile-time check there fails when the two drift apart.
+ *
+ * Keys (`key`, `measure`, condition keys…) match {@link KEY_PATTERN}. A condition is one cell of the
+ * within factors; its key is the level keys in factor order joined by a full stop.
+ */
+export interface Protocol {
+  readonly title: string;
+  readonly rationale: string;
+  readonly hypotheses: readonly Hypothesis[];
+  readonly withinFactors: readonly Factor[];
+  readonly betweenFactors: readonly Factor[];
+  readonly scheme: SchemeChoice;
+  readonly policy: PolicyChoice;
+  readonly replacement: ReplacementRule;
+  readonly periods: PeriodPlan;
+  readonly sites: readonly SiteTarget[];
+  readonly measures: readonly Measure[];
+  readonly exclusions: readonly ExclusionRule[];
+  readonly analysis: AnalysisPlan;
+}
+
+export interface Hypothesis {
+  readonly key: string;
+  readonly statement: string;
+}
+
+export interface Factor {
+  readonly key: string;
+  readonly label: string;
+  readonly levels: readonly Level[];
+}
+
+export interface Level {
+  readonly key: string;
+  readonly label: string;
+}
+
+/** The counterbalancing scheme the sequences come from. A custom list names condition keys. */
+export type SchemeChoice =
+  | { readonly kind: 'complete-permutations' }
+  | { readonly kind: 'cyclic-latin-square' }
+  | { readonly kind: 'williams' }
+  | { readonly kind: 'custom-list'; readonly sequences: readonly (readonly string[])[] };
+
+/** The rule by which sequences of the scheme are handed out. */
+export type PolicyChoice = { readonly kind: 'balanced' };
+
+/** Who takes a vacated slot: the next arrival of the same site and stratum, or nobody. */
+export type ReplacementRule = { readonly kind: 'same-site' } | { readonly kind: 'none' };
+
+export interface PeriodPlan {
+  /** Number of periods in every sequence. */
+  readonly count: number;
+  /** Trials of one participant in one period. */
+  readonly repetitions: number;
+  /** Period numbers (from 1) by visit: `[[1, 2], [3, 4]]` is two visits of two periods. */
+  readonly visits: readonly (readonly number[])[];
+  /** Rest between consecutive periods, ISO 8601 durations, from the start of one to the next. */
+  readonly washout: { readonly minimum: string; readonly maximum: string | null };
+}
+
+export interface SiteTarget {
+  readonly siteId: string;
+  /** Slots at this site: how many participants it may enrol, replacements not counted. */
+  readonly targetEnrolment: number;
+}
+
+export type Scale = 'continuous' | 'time-like' | 'count' | 'binary' | 'ordinal';
+
+export interface Measure {
+  readonly key: string;
+  readonly label: string;
+  readonly unit: string | null;
+  readonly scale: Scale;
+  readonly direction: 'lower-is-better' | 'higher-is-better' | 'neither';
+  readonly taken: 'each-trial' | 'once-a-period';
+  /** Values outside are implausible: stored and flagged, never refused. Null ends are open. */
+  readonly validRange: { readonly minimum: number | null; readonly maximum: number | null } | null;
+  /** Decimal places in reports. */
+  readonly decimals: number;
+  /** Ordinal measures only: the points of the rating, ascending. */
+  readonly points: readonly { readonly value: number; readonly label: string }[] | null;
+  /** Counts only: what the count is out of or over, a constant or another measure of the trial. */
+  readonly exposure: Exposure | null;
+}
+
+export type Exposure =
+  | { readonly kind: 'constant'; readonly value: number; readonly unit: string }
+  | { readonly kind: 'measure'; readonly measure: string };
+
+/**
+ * Exclusion rules, applied in the order given, before anything is estimated:
+ * - `range`: a value outside [minimum, maximum] is left out;
+ * - `time-out`: a value at or above the limit is left out;
+ * - `incomplete-participant`: all values of a participant with fewer completed periods are left out.
+ */
+export type ExclusionRule =
+  | {
+      readonly kind: 'range';
+      readonly measure: string;
+      readonly minimum: number | null;
+      readonly maximum: number | null;
+    }
+  | { readonly kind: 'time-out'; readonly measure: string; readonly limit: number }
+  | { readonly kind: 'incomplete-participant'; readonly minimumPeriods: number };
+
+export interface AnalysisPlan {
+  readonly measures: readonly MeasurePlan[];
+}
+
+export interface MeasurePlan {
+  readonly measure: string;
+  readonly role: 'primary' | 'secondary';
+  readonly method: AnalysisMethod;
+  /** The one primary estimate of the condition comparisons; the other stands beside it. */
+  readonly primaryEstimate: 'adjusted-for-period' | 'unadjusted';
+  readonly contrasts: ContrastChoice;
+  readonly multiplicity: 'holm' | 'bonferroni' | 'none';
+  readonly alpha: number;
+  /**
+   * Equivalence margin in the unit of the measure (for time-like measures: a ratio of geometric
+   * means, lower < 1 < upper). Null when equivalence is not claimed.
+   */
+  readonly equivalence: { readonly lower: number; readonly upper: number } | null;
+}
+
+/** Methods of analysis; each has one room in the core, and other methods join this union. */
+export type AnalysisMethod = 'repeated-measures-anova' | 'friedman';
+
+export type ContrastChoice =
+  | { readonly kind: 'all-pairs' }
+  | { readonly kind: 'against-reference'; readonly reference: string };
+
+/** Keys are lower-case words joined by hyphens, at most 40 characters, beginning with a letter. */
+export const KEY_PATTERN = /^[a-z][a-z0-9]*(?:-[a-z0-9]+)*$/;
+
+/** One cell of the within factors. */
+export interface Condition {
+  readonly key: string;
+  readonly label: string;
+  /** Level key by within factor, in factor order. */
+  readonly levelKeys: readonly string[];
+}
+
+/**
+ * The conditions of a protocol: the product of its within factors' levels, the last factor
+ * varying fastest. A study with one within factor has that factor's levels as conditions.
+ */
+export function conditionsOf(withinFactors: readonly Factor[]): Condition[] {
+  let cells: Condition[] = [{ key: '', label: '', levelKeys: [] }];
+  for (const factor of withinFactors) {
+    cells = cells.flatMap((cell) =>
+      factor.levels.map((level) => ({
+        key: cell.key === '' ? level.key : `${cell.key}.${level.key}`,
+        label: cell.label === '' ? level.label : `${cell.label}, ${level.label}`,
+        levelKeys: [...cell.levelKeys, level.key],
+      })),
+    );
+  }
+  return cells;
+}
