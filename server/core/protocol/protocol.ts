@@ -3,8 +3,8 @@
  * analyse without knowing HTTP. The zod schema in `server/studies/schemas.ts` parses incoming JSON
  * into exactly this type; a compile-time check there fails when the two drift apart.
  *
- * Keys (`key`, `measure`, condition keys…) match {@link KEY_PATTERN}. A condition is one cell of the
- * within factors; its key is the level keys in factor order joined by a full stop.
+ * Keys (`key`, `measure`, condition keys…) match {@link KEY_PATTERN}. A condition is one cell of
+ * the within factors; its key is the level keys in factor order joined by a full stop.
  */
 export interface Protocol {
   readonly title: string;
@@ -95,7 +95,8 @@ export type Exposure =
  * Exclusion rules, applied in the order given, before anything is estimated:
  * - `range`: a value outside [minimum, maximum] is left out;
  * - `time-out`: a value at or above the limit is left out;
- * - `incomplete-participant`: all values of a participant with fewer completed periods are left out.
+ * - `incomplete-participant`: all values of a participant with fewer completed periods are left
+ *   out.
  */
 export type ExclusionRule =
   | {
