@@ -1,0 +1,43 @@
+import type { FastifyInstance } from 'fastify';
+import type { Logger } from 'pino';
+import type { Config } from '#platform/config.ts';
+import type { Database } from '#platform/database.ts';
+import { installGuard } from '#platform/guard.ts';
+import { registerHealth } from '#platform/health.ts';
+import { createHttp, registerProblemPages } from '#platform/http.ts';
+import { registerOpenApi } from '#platform/openapi.ts';
+import { isOperation, permits } from '#server/access/permissions.ts';
+import { accessRoutes } from '#server/access/routes.ts';
+import { createAccessService } from '#server/access/service.ts';
+import { auditRoutes } from '#server/audit/routes.ts';
+import { createAuditService } from '#server/audit/service.ts';
+
+export interface AppOptions {
+  readonly config: Config;
+  readonly database: Database;
+  readonly logger: Logger;
+}
+
+/**
+ * Config and database in, a Fastify instance out. It never listens, so that `main.ts` and the tests
+ * use the very same one. Features are put together here and nowhere else.
+ */
+export async function buildApp({ config, database, logger }: AppOptions): Promise<FastifyInstance> {
+  const app = await createHttp({
+    logger,
+    bodyLimitBytes: config.bodyLimitBytes,
+    rateLimitPerMinute: config.rateLimitPerMinute,
+    trustProxy: config.trustProxy,
+  });
+  await registerOpenApi(app);
+
+  const access = createAccessService(database);
+  const audit = createAuditService({ database, maySeeStudy: async () => false });
+
+  installGuard(app, { authenticate: access.authenticate, permits, isOperation });
+  registerHealth(app, database);
+  registerProblemPages(app);
+  await app.register(accessRoutes, { service: access });
+  await app.register(auditRoutes, { service: audit });
+  return app;
+}
