@@ -95,7 +95,8 @@ export async function selectHead(
   chain: string,
 ): Promise<{ number: number; hash: string } | null> {
   const rows = await tx<{ number: number; hash: string }[]>`
-    select last_number::float8 as number, last_hash as hash from audit_chains where chain = ${chain}`;
+    select last_number::float8 as number, last_hash as hash
+    from audit_chains where chain = ${chain}`;
   return rows[0] ?? null;
 }
 
@@ -154,7 +155,7 @@ export async function selectCheckpoints(
     where ${after}::uuid is null or id > ${after}::uuid order by id limit ${limit}`;
 }
 
-/** The key under `name`, made by `make` when this is the first start. Safe with two starts at once. */
+/** The key under `name`, made by `make` at first start. Safe with two starts at once. */
 export async function ensureKey(
   tx: SqlTransaction,
   name: string,

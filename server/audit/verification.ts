@@ -34,7 +34,7 @@ export async function verifyChains(
   return { intact: faults.length === 0, chains: summaries, disclosures, faults };
 }
 
-/** The heads a checkpoint vouches for, or a fault when it was not signed with this service's key. */
+/** The heads a checkpoint vouches for; a fault when it is not signed with this service's key. */
 function checkpointHeads(
   key: SigningKey,
   checkpoint: { document: string; signature: string } | undefined,
@@ -80,7 +80,8 @@ async function verifyChain(
   }
   const head = await store.selectHead(tx, chain);
   if (fault === null && (head === null || head.number !== number || head.hash !== previous)) {
-    const message = `The recorded head is entry ${head?.number ?? 'none'}; the rows end at ${number}.`;
+    const recorded = head?.number ?? 'none';
+    const message = `The recorded head is entry ${recorded}; the rows end at ${number}.`;
     fault = { chain, number, code: 'head-mismatch', message };
   }
   if (fault !== null) faults.push(fault);

@@ -15,7 +15,14 @@ import {
 import type { Logger } from 'pino';
 import { z } from 'zod';
 import { uuidv7 } from './ids.ts';
-import { type Fault, ProblemError, problemPath, problems } from './problems.ts';
+import {
+  type Fault,
+  PROBLEM_TYPES,
+  ProblemError,
+  type ProblemType,
+  problemPath,
+  problems,
+} from './problems.ts';
 
 export interface HttpOptions {
   readonly logger: Logger;
@@ -36,12 +43,10 @@ const ProblemFault = z.strictObject({
   row: z.number().int().optional().describe('Row of an upload, from 1'),
 });
 
-const problemTypes = Object.keys(problems).map((name) => `/problems/${name}`);
-
 /** RFC 9457 problem details, with one entry a fault for bad input. */
 export const ProblemResponse = z
   .strictObject({
-    type: z.enum(problemTypes as [string, ...string[]]),
+    type: z.enum(PROBLEM_TYPES.map(problemPath)),
     title: z.string(),
     status: z.number().int(),
     detail: z.string(),
@@ -171,19 +176,23 @@ function pointerToken(text: string): string {
 
 /** Serves one page a problem type, so that every `type` URI leads somewhere. */
 export function registerProblemPages(app: FastifyInstance): void {
-  for (const [name, problem] of Object.entries(problems)) {
-    app.get(
-      problemPath(name as keyof typeof problems),
-      { config: { open: true } },
-      (_request, reply) =>
-        reply
-          .type('text/html; charset=utf-8')
-          .send(
-            `<!doctype html><html lang="en"><meta charset="utf-8"><title>${problem.title}</title>` +
-              `<h1>${problem.title}</h1><p>Problem type <code>${name}</code>, answered with HTTP ` +
-              `status ${problem.status}. The field <code>detail</code> of the answer says what was ` +
-              'wrong with the request at hand; <code>faults</code>, where given, names each place.</p></html>',
-          ),
+  for (const name of PROBLEM_TYPES) {
+    app.get(problemPath(name), { config: { open: true } }, (_request, reply) =>
+      reply.type('text/html; charset=utf-8').send(problemPage(name)),
     );
   }
+}
+
+function problemPage(name: ProblemType): string {
+  const { title, status } = problems[name];
+  return `<!doctype html>
+<html lang="en">
+<meta charset="utf-8">
+<title>${title}</title>
+<h1>${title}</h1>
+<p>Problem type <code>${name}</code>, answered with HTTP status ${status}. The field
+<code>detail</code> of the answer says what was wrong with the request at hand;
+<code>faults</code>, where given, names each place.</p>
+</html>
+`;
 }

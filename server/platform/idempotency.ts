@@ -45,7 +45,8 @@ export async function once<Body>(
   );
   if (claimed.length === 0) {
     const rows = await executor.query(
-      'select request_hash, status, body from idempotency_answers where token_id = $1::uuid and key = $2',
+      `select request_hash, status, body from idempotency_answers
+       where token_id = $1::uuid and key = $2`,
       [tokenId, key],
     );
     const first = storedAnswer.parse(rows[0]);

@@ -45,6 +45,13 @@ export const problems = {
 
 export type ProblemType = keyof typeof problems;
 
+/** The names of the table, in its order. */
+export const PROBLEM_TYPES = Object.keys(problems).filter(isProblemType);
+
+function isProblemType(name: string): name is ProblemType {
+  return Object.hasOwn(problems, name);
+}
+
 /** One fault of a request: where (RFC 6901 pointer), what, and what was expected instead. */
 export interface Fault {
   readonly pointer: string;
@@ -65,7 +72,7 @@ export interface ProblemDetails {
   readonly faults?: readonly Fault[];
 }
 
-/** An expected refusal: a bad request or a broken rule. Thrown by services, answered as RFC 9457. */
+/** An expected refusal, a bad request or a broken rule; answered as RFC 9457. */
 export class ProblemError extends Error {
   override readonly name = 'ProblemError';
   readonly problem: ProblemType;
