@@ -5,8 +5,8 @@ import type { Database } from '#platform/database.ts';
 import { installGuard } from '#platform/guard.ts';
 import { registerHealth } from '#platform/health.ts';
 import { createHttp, registerProblemPages } from '#platform/http.ts';
-import { registerOpenApi } from '#platform/openapi.ts';
-import { isOperation, permits } from '#server/access/permissions.ts';
+import { registerOpenApi, registerReference } from '#platform/openapi.ts';
+import { isOperation, permits, rolesOf } from '#server/access/permissions.ts';
 import { accessRoutes } from '#server/access/routes.ts';
 import { createAccessService } from '#server/access/service.ts';
 import { auditRoutes } from '#server/audit/routes.ts';
@@ -37,6 +37,7 @@ export async function buildApp({ config, database, logger }: AppOptions): Promis
   installGuard(app, { authenticate: access.authenticate, permits, isOperation });
   registerHealth(app, database);
   registerProblemPages(app);
+  registerReference(app, rolesOf);
   await app.register(accessRoutes, { service: access });
   await app.register(auditRoutes, { service: audit });
   return app;

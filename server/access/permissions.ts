@@ -97,7 +97,10 @@ export function isOperation(name: string): name is Operation {
 
 /** May a token of this role do this operation at all? */
 export function permits(role: Role, operation: string): boolean {
-  if (!isOperation(operation)) return false;
-  const roles: readonly Role[] = permissions[operation];
-  return roles.includes(role);
+  return rolesOf(operation).includes(role);
+}
+
+/** The roles that may do an operation; none for an operation that does not exist. */
+export function rolesOf(operation: string): readonly Role[] {
+  return isOperation(operation) ? permissions[operation] : [];
 }

@@ -2,6 +2,7 @@ import swagger from '@fastify/swagger';
 import type { FastifyInstance } from 'fastify';
 import { jsonSchemaTransform, jsonSchemaTransformObject } from 'fastify-type-provider-zod';
 import { stringify } from 'yaml';
+import { type RolesOf, referencePage } from './reference-page.ts';
 
 /** The API's version, which the document and the SDK carry. */
 export const API_VERSION = '1.0.0';
@@ -35,4 +36,15 @@ export async function registerOpenApi(app: FastifyInstance): Promise<void> {
 /** The document as committed in openapi.yaml. */
 export function openApiYaml(app: FastifyInstance): string {
   return stringify(app.swagger(), { lineWidth: 100, aliasDuplicateObjects: false });
+}
+
+/** Serves the document and the reference page made from it. */
+export function registerReference(app: FastifyInstance, rolesOf: RolesOf): void {
+  const open = { config: { open: true } } as const;
+  app.get('/openapi.yaml', open, (_request, reply) =>
+    reply.type('application/yaml; charset=utf-8').send(openApiYaml(app)),
+  );
+  app.get('/docs', open, (_request, reply) =>
+    reply.type('text/html; charset=utf-8').send(referencePage(app.swagger(), rolesOf)),
+  );
 }

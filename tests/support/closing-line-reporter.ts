@@ -2,8 +2,8 @@ import type { Reporter, TestModule } from 'vitest/node';
 
 /**
  * Prints vitest's own figures as one plain line, `N passed, N failed, N skipped`, after its
- * summary: continuous integration reads that line. A test file that could not be loaded, and an error
- * outside any test, count as failures, so that the line never looks greener than the run.
+ * summary: continuous integration reads that line. A test file that could not be loaded, and an
+ * error outside any test, count as failures, so that the line never looks greener than the run.
  */
 export default class ClosingLineReporter implements Reporter {
   onTestRunEnd(modules: readonly TestModule[], unhandledErrors: readonly unknown[]): void {
