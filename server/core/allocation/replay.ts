@@ -39,6 +39,9 @@ export interface ReplayDifference {
  * the slots before; and there must be as many slots as the study says it issued, since slots cut
  * off at the end leave no gap.
  *
+ * What it cannot see: two slots of different sites that change places in the order of issue, when
+ * that order made no difference to either or to what followed. The audit log holds the order.
+ *
  * @param input.sets        the sequences of each protocol version by version number
  * @param input.slots       in any order; they are replayed by issue number
  * @param input.slotsIssued how many the study says it issued
