@@ -116,7 +116,7 @@ describe('an adversary who chooses who comes next', () => {
   function mixedArrivals(sites: number, strata: number): (ledger: Ledger) => Arrival {
     let state = 20_240_229;
     const below = (limit: number): number => {
-      // published: the multiplier and modulus of Park & Miller 1988, Communications of the ACM 31:1192
+      // published: Park, Miller & Stockmeyer 1993, Communications of the ACM 36(7):105–110
       state = (state * 48_271) % 2_147_483_647;
       return state % limit;
     };

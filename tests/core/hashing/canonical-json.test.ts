@@ -14,7 +14,11 @@ describe('canonical JSON', () => {
       "string": "\u20ac$\u000F\u000aA'\u0042\u0022\u005c\\\"\/",
       "literals": [null, true, false]
     }`;
-    const expected = String.raw`{"literals":[null,true,false],"numbers":[333333333.3333333,1e+30,4.5,0.002,1e-27],"string":"€$\u000f\nA'B\"\\\\\"/"}`;
+    const expected = [
+      '{"literals":[null,true,false],',
+      '"numbers":[333333333.3333333,1e+30,4.5,0.002,1e-27],',
+      String.raw`"string":"€$\u000f\nA'B\"\\\\\"/"}`,
+    ].join('');
     expect(canonicalJson(JSON.parse(input))).toBe(expected);
   });
 
@@ -71,7 +75,7 @@ describe('canonical JSON', () => {
     expect(canonicalJson(doubleOf(bits))).toBe(text);
   });
 
-  // published: RFC 8785, appendix B and section 3.2.2.2: NaN, Infinity and lone surrogates are errors
+  // published: RFC 8785, appendix B and section 3.2.2.2: NaN, Infinity, lone surrogates are errors
   it.each([
     ['NaN', { a: [0, doubleOf('7fffffffffffffff')] }, '/a/1'],
     ['Infinity', { a: doubleOf('7ff0000000000000') }, '/a'],
