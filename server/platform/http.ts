@@ -67,6 +67,8 @@ export async function createHttp(options: HttpOptions): Promise<FastifyInstance>
     trustProxy: options.trustProxy,
     genReqId: () => uuidv7(),
     requestIdHeader: false,
+    // Fastify would log addresses as they came, and participants' codes stand in them.
+    disableRequestLogging: true,
     routerOptions: { maxParamLength: 200 },
     // Requests under way are answered before the server closes.
     return503OnClosing: true,
@@ -75,6 +77,11 @@ export async function createHttp(options: HttpOptions): Promise<FastifyInstance>
   app.setSerializerCompiler(serializerCompiler);
   app.addHook('onRequest', async (request, reply) => {
     reply.header('request-id', request.id);
+  });
+  app.addHook('onResponse', async (request, reply) => {
+    const { statusCode, elapsedTime } = reply;
+    const route = request.routeOptions.url ?? 'none';
+    request.log.info({ method: request.method, route, statusCode, elapsedTime }, 'answered');
   });
   app.addHook('onRoute', (route) => {
     if (route.schema === undefined) return;
@@ -99,7 +106,7 @@ export async function createHttp(options: HttpOptions): Promise<FastifyInstance>
   app.setErrorHandler((error: FastifyError | ProblemError, request, reply) => {
     const problem = asProblem(error, request);
     if (problem.status >= 500) request.log.error({ err: error }, 'request failed');
-    else request.log.info({ problem: problem.problem, detail: problem.message }, 'refused');
+    else request.log.info({ problem: problem.problem }, 'refused');
     return reply
       .status(problem.status)
       .headers(problem.headers)
