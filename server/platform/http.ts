@@ -105,7 +105,7 @@ export async function createHttp(options: HttpOptions): Promise<FastifyInstance>
   }
   app.setErrorHandler((error: FastifyError | ProblemError, request, reply) => {
     const problem = asProblem(error, request);
-    if (problem.status >= 500) request.log.error({ err: error }, 'request failed');
+    if (problem.status >= 500) request.log.error({ err: loggable(error) }, 'request failed');
     else request.log.info({ problem: problem.problem }, 'refused');
     return reply
       .status(problem.status)
@@ -143,7 +143,7 @@ function asProblem(error: FastifyError | ProblemError, request: FastifyRequest):
     });
   }
   if (error.code === 'FST_ERR_RESPONSE_SERIALIZATION') {
-    request.log.error({ err: error, cause: error.cause }, 'an answer does not fit its schema');
+    request.log.error({ err: loggable(error.cause) }, 'an answer does not fit its schema');
     return new ProblemError('internal-error', 'The answer could not be put together.');
   }
   if (error.statusCode === 413) return new ProblemError('payload-too-large', error.message);
@@ -152,6 +152,15 @@ function asProblem(error: FastifyError | ProblemError, request: FastifyRequest):
     return new ProblemError('invalid-request', error.message);
   }
   return new ProblemError('internal-error', 'The fault was logged under this request id.');
+}
+
+/**
+ * What of an unexpected error may be logged. Database errors carry the offending row and the query's
+ * parameters in further fields, and those may be somebody's values.
+ */
+function loggable(error: unknown): { type: string; message: string; stack: string } {
+  if (!(error instanceof Error)) return { type: typeof error, message: '', stack: '' };
+  return { type: error.name, message: error.message, stack: error.stack ?? '' };
 }
 
 /** Body faults point into the body; faults elsewhere name the part first (`/query/limit`). */
