@@ -35,7 +35,10 @@ const UNREACHABLE = [
   'EAI_AGAIN',
   'ETIMEDOUT',
   'CONNECT_TIMEOUT',
-].concat(['28P01', '28000', '3D000']);
+  '28P01',
+  '28000',
+  '3D000',
+];
 const UNAVAILABLE = ['EADDRINUSE', 'EADDRNOTAVAIL', 'EACCES', 'ENOTFOUND'];
 
 await run();

@@ -155,9 +155,11 @@ async function stopOrphan(cluster: string, log: (line: string) => void): Promise
   const pidFile = join(cluster, 'postmaster.pid');
   if (!existsSync(pidFile)) return;
   const pid = Number.parseInt(readFileSync(pidFile, 'utf8'), 10);
-  if (!Number.isInteger(pid) || pid <= 0 || processBirth(pid) === null) return;
-  if (!runsOn(pid, cluster)) {
-    // The number was given to another program since; PostgreSQL would take that for a server.
+  if (!Number.isInteger(pid) || pid <= 0) return;
+  if (processBirth(pid) === null || !runsOn(pid, cluster)) {
+    // PostgreSQL would take any process of that number for a server: another program that got the
+    // number since, or a dead one that nobody has collected, as happens in containers. Its check of
+    // shared memory, which does not need the file, still refuses if sessions of the old server live.
     rmSync(pidFile);
     return;
   }

@@ -19,9 +19,18 @@ afterEach(({ task }) => {
   if (task.result?.state === 'fail') someTestFailed = true;
 });
 
-/** A migrated, empty database of the caller's own: a copy of the template of this run. */
-export async function cloneDatabase(): Promise<ClonedDatabase> {
-  const { adminUrl, template } = inject('testServer');
+/** A migrated database without rows, of the caller's own: a copy of this run's template. */
+export function cloneDatabase(): Promise<ClonedDatabase> {
+  return copyDatabase(inject('testServer').template);
+}
+
+/** A database without any table, of the caller's own. */
+export function createEmptyDatabase(): Promise<ClonedDatabase> {
+  return copyDatabase('template0');
+}
+
+async function copyDatabase(template: string): Promise<ClonedDatabase> {
+  const { adminUrl } = inject('testServer');
   const name = `fairturn_clone_${randomBytes(6).toString('hex')}`;
   await administer(adminUrl, async (sql) => {
     await sql`select pg_advisory_lock(${CLONE_LOCK})`;

@@ -1,0 +1,59 @@
+import { type ChildProcess, spawn } from 'node:child_process';
+import { createInterface } from 'node:readline';
+
+export interface NodeProgram {
+  readonly child: ChildProcess;
+  readonly pid: number;
+  /** Everything printed so far on either stream. */
+  output(): string;
+  /** The first line on standard output that matches; rejects when the program ends before it. */
+  line(pattern: RegExp): Promise<string>;
+  /** Exit code, or the signal's name. */
+  readonly ended: Promise<number | NodeJS.Signals>;
+}
+
+/** Starts a program under the Node that runs the tests, with only the given environment. */
+export function startNodeProgram(
+  program: string,
+  options: { args?: string[]; environment?: Record<string, string> } = {},
+): NodeProgram {
+  const child = spawn(process.execPath, [program, ...(options.args ?? [])], {
+    env: { PATH: process.env.PATH, ...options.environment },
+    stdio: ['ignore', 'pipe', 'pipe'],
+  });
+  if (child.pid === undefined) throw new Error(`${program} could not be started.`);
+  const lines: string[] = [];
+  const waiting = new Set<() => void>();
+  createInterface({ input: child.stdout }).on('line', (line) => {
+    lines.push(line);
+    for (const look of waiting) look();
+  });
+  let output = '';
+  child.stdout.on('data', (chunk: Buffer) => {
+    output += chunk.toString();
+  });
+  child.stderr.on('data', (chunk: Buffer) => {
+    output += chunk.toString();
+  });
+  const ended = new Promise<number | NodeJS.Signals>((settle) => {
+    child.once('close', (code, signal) => settle(signal ?? code ?? -1));
+  });
+  return {
+    child,
+    pid: child.pid,
+    output: () => output,
+    ended,
+    line: (pattern) =>
+      new Promise((settle, fail) => {
+        const look = () => {
+          const found = lines.find((line) => pattern.test(line));
+          if (found === undefined) return;
+          waiting.delete(look);
+          settle(found);
+        };
+        waiting.add(look);
+        look();
+        void ended.then((how) => fail(new Error(`${program} ended (${how}) first:\n${output}`)));
+      }),
+  };
+}
