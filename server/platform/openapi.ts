@@ -1,5 +1,5 @@
 import swagger from '@fastify/swagger';
-import type { FastifyInstance } from 'fastify';
+import type { FastifyInstance, FastifySchema } from 'fastify';
 import { jsonSchemaTransform, jsonSchemaTransformObject } from 'fastify-type-provider-zod';
 import { stringify } from 'yaml';
 import { type RolesOf, referencePage } from './reference-page.ts';
@@ -27,10 +27,71 @@ export async function registerOpenApi(app: FastifyInstance): Promise<void> {
     transform: (route) => {
       const { schema, url } = jsonSchemaTransform(route);
       const open = route.route.config?.open === true;
-      return { schema: open ? { ...schema, hide: true } : schema, url };
+      if (open) return { schema: { ...schema, hide: true }, url };
+      return { schema: route.route.method === 'GET' ? schema : withHeaders(schema), url };
     },
-    transformObject: jsonSchemaTransformObject,
+    transformObject: (input) => withoutUnusedSchemas(jsonSchemaTransformObject(input)),
   });
+}
+
+/** Names the headers that the guard reads from every request that changes something. */
+function withHeaders(schema: FastifySchema): FastifySchema {
+  const properties = {
+    'idempotency-key': {
+      type: 'string',
+      pattern: '^[\\x21-\\x7e]{1,200}$',
+      description: 'The same key and request give the first answer again; nothing is done twice',
+    },
+    'operator-code': {
+      type: 'string',
+      pattern: '^[A-Za-z0-9][A-Za-z0-9_-]{0,39}$',
+      description: 'Code of the person at the station; a station must send it',
+    },
+  };
+  return { ...schema, headers: { type: 'object', properties } };
+}
+
+/**
+ * Every named schema is written out twice, as what is read (`…Input`) and as what is answered; most
+ * of those nothing refers to. Those are left out, and an `…Input` without its twin gets the plain
+ * name.
+ */
+function withoutUnusedSchemas<Document extends object>(document: Document): Document {
+  const { components, paths }: OpenApiParts = JSON.parse(JSON.stringify(document));
+  const schemas = components?.schemas ?? {};
+  const used = new Set<string>();
+  const queue = referredIn(paths);
+  for (let name = queue.pop(); name !== undefined; name = queue.pop()) {
+    if (used.has(name)) continue;
+    used.add(name);
+    queue.push(...referredIn(schemas[name]));
+  }
+  const renamed = (name: string): string => {
+    const plain = name.replace(/Input$/, '');
+    return used.has(plain) ? name : plain;
+  };
+  const kept = [...used]
+    .map((name) => [renamed(name), schemas[name]] as const)
+    .sort(([a], [b]) => (a < b ? -1 : 1));
+  const tidied = { ...document, components: { ...components, schemas: Object.fromEntries(kept) } };
+  return JSON.parse(
+    JSON.stringify(tidied).replace(REFERENCE, (_all, name: string) => reference(renamed(name))),
+  );
+}
+
+interface OpenApiParts {
+  readonly components?: { readonly schemas?: Readonly<Record<string, unknown>> };
+  readonly paths?: unknown;
+}
+
+const REFERENCE = /"#\/components\/schemas\/([^"]+)"/g;
+
+function reference(name: string): string {
+  return JSON.stringify(`#/components/schemas/${name}`);
+}
+
+function referredIn(part: unknown): string[] {
+  return [...(JSON.stringify(part) ?? '').matchAll(REFERENCE)].flatMap(([, name]) => name ?? []);
 }
 
 /** The document as committed in openapi.yaml. */
