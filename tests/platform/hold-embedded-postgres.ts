@@ -4,6 +4,6 @@ import { startEmbeddedPostgres } from '#platform/embedded-postgres.ts';
 
 const folder = process.argv[2];
 if (folder === undefined) throw new Error('Name a folder.');
-const server = await startEmbeddedPostgres({ folder, log: () => undefined, durable: false });
+const server = await startEmbeddedPostgres({ folder, log: () => undefined });
 process.stdout.write(`url ${server.url}\n`);
 setInterval(() => undefined, 60_000);
