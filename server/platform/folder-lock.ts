@@ -2,15 +2,17 @@ import { spawnSync } from 'node:child_process';
 import { linkSync, mkdirSync, readdirSync, readFileSync, rmSync, writeFileSync } from 'node:fs';
 import { hostname } from 'node:os';
 import { join } from 'node:path';
-import { z } from 'zod';
 
 /** Thrown when another live process holds the folder, or may hold it. */
 export class FolderLockedError extends Error {
   override readonly name = 'FolderLockedError';
 }
 
-const Holder = z.strictObject({ pid: z.number().int(), birth: z.string(), host: z.string() });
-type Holder = z.infer<typeof Holder>;
+interface Holder {
+  readonly pid: number;
+  readonly birth: string;
+  readonly host: string;
+}
 
 const LOCK_NAME = /^lock\.(\d+)$/;
 
@@ -92,12 +94,12 @@ function refuseIfAlive(folder: string, number: number): void {
   if (holder.host !== hostname()) {
     throw new FolderLockedError(
       `The folder ${folder} is held by process ${holder.pid} on the host ${holder.host}, which ` +
-        `cannot be looked at from here. If no server runs there any more, remove ${file}.`,
+        `cannot be looked at from here. If no process runs there any more, remove ${file}.`,
     );
   }
   if (isAlive(holder)) {
     throw new FolderLockedError(
-      `The folder ${folder} is in use by another server, process ${holder.pid}.`,
+      `The folder ${folder} is in use by another process, number ${holder.pid}.`,
     );
   }
 }
@@ -114,7 +116,15 @@ function readHolder(file: string): Holder | null {
   } catch {
     return null;
   }
-  return Holder.parse(JSON.parse(text));
+  const holder: unknown = JSON.parse(text);
+  if (isHolder(holder)) return holder;
+  throw new FolderLockedError(`${file} is not a lock file. If no process runs there, remove it.`);
+}
+
+function isHolder(value: unknown): value is Holder {
+  if (typeof value !== 'object' || value === null) return false;
+  const { pid, birth, host } = value as Partial<Record<keyof Holder, unknown>>;
+  return Number.isInteger(pid) && typeof birth === 'string' && typeof host === 'string';
 }
 
 function lockNumbers(folder: string): number[] {

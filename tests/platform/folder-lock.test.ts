@@ -61,7 +61,7 @@ describe('folder lock', () => {
       expect(folderHolder(folder)).toBe(holder?.pid);
       for (const line of said) {
         if (line !== 'held')
-          expect(line).toContain(`in use by another server, process ${holder?.pid}`);
+          expect(line).toContain(`in use by another process, number ${holder?.pid}`);
       }
     } finally {
       for (const { pid } of rivals) process.kill(pid, 'SIGKILL');
