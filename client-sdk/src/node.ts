@@ -1,0 +1,3 @@
+export { FolderLockedError } from '../../server/platform/folder-lock.ts';
+export { OutboxDamagedError, openFileOutbox } from './file-outbox.ts';
+export { openFileStore } from './file-store.ts';
