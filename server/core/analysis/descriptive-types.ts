@@ -57,7 +57,7 @@ export interface Distribution {
 /** What is added by scale. */
 export type ScaleSummary =
   | { readonly scale: 'continuous' }
-  | { readonly scale: 'time-like'; readonly geometricMean: Estimable<{ readonly value: number }> }
+  | { readonly scale: 'time-like'; readonly geometricMean: Estimable<{ readonly mean: number }> }
   | {
       readonly scale: 'count';
       readonly rate: Estimable<{

@@ -45,11 +45,13 @@ export function missingData(data: AnalysisData, measure: Measure): MissingData {
   const { protocol, conditions } = data;
   const overall = emptyCounts();
   const cells = new Map<string, MutableCounts>();
+  const known = new Set(conditions.map(({ key }) => key));
   for (const participant of data.participants) {
     if (participant.frame.ending?.kind === 'void') continue;
     const byPeriod = Map.groupBy(participant.trials, ({ period }) => period);
     for (const [index, condition] of participant.frame.sequence.entries()) {
       const period = index + 1;
+      if (!known.has(condition) || period > protocol.periods.count) continue;
       const cell = cells.get(`${condition} ${period}`) ?? emptyCounts();
       cells.set(`${condition} ${period}`, cell);
       const trials = byPeriod.get(period) ?? [];

@@ -4,12 +4,7 @@ import type {
   RatioEstimate,
   StandardisedDifference,
 } from '../inference/inference-types.ts';
-import type {
-  AdjustedMean,
-  ContrastEstimate,
-  FitRank,
-  FTest,
-} from '../models/period-adjusted-types.ts';
+import type { AdjustedMean, ContrastEstimate, FTest } from '../models/period-adjusted-types.ts';
 import type { RepeatedMeasuresAnova } from '../models/repeated-measures-types.ts';
 import type { MeasurePlan, Scale } from '../protocol/protocol.ts';
 import type { FriedmanTest } from '../ranks/rank-types.ts';
@@ -175,7 +170,11 @@ export interface OrderFit {
   readonly participants: number;
   readonly residualDegreesOfFreedom: number;
   readonly residualStandardDeviation: number;
-  readonly rank: FitRank;
+  /** Conditions and periods of which the data could not tell the effect from the others. */
+  readonly notSeparable: {
+    readonly conditions: readonly string[];
+    readonly periods: readonly number[];
+  };
   readonly conditionTest: Estimable<FTest>;
   readonly conditionMeans: readonly ({ readonly condition: string } & Estimable<AdjustedMean>)[];
   readonly periodTest: Estimable<FTest>;
