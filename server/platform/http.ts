@@ -5,6 +5,7 @@ import fastify, {
   type FastifyError,
   type FastifyInstance,
   type FastifyRequest,
+  LogController,
 } from 'fastify';
 import {
   hasZodFastifySchemaValidationErrors,
@@ -68,7 +69,7 @@ export async function createHttp(options: HttpOptions): Promise<FastifyInstance>
     genReqId: () => uuidv7(),
     requestIdHeader: false,
     // Fastify would log addresses as they came, and participants' codes stand in them.
-    disableRequestLogging: true,
+    logController: new LogController({ disableRequestLogging: true }),
     routerOptions: { maxParamLength: 200 },
     // Requests under way are answered before the server closes.
     return503OnClosing: true,
