@@ -1,9 +1,10 @@
 // The service: reads its configuration, opens and migrates the database, listens, and on SIGTERM or
 // SIGINT finishes what is under way and closes everything in the reverse order.
+import { setTimeout as pause } from 'node:timers/promises';
 import type { FastifyInstance } from 'fastify';
 import type { Logger } from 'pino';
 import { type Config, ConfigurationError, loadConfig } from '#platform/config.ts';
-import { openDatabase } from '#platform/database.ts';
+import { type Database, openDatabase } from '#platform/database.ts';
 import { startEmbeddedPostgres } from '#platform/embedded-postgres.ts';
 import { FolderLockedError } from '#platform/folder-lock.ts';
 import { createLogger } from '#platform/logging.ts';
@@ -40,6 +41,9 @@ const UNREACHABLE = [
   '3D000',
 ];
 const UNAVAILABLE = ['EADDRINUSE', 'EADDRNOTAVAIL', 'EACCES', 'ENOTFOUND'];
+
+const IDLE_CHECK_MS = 100;
+const DATABASE_CLOSE_MS_MAX = 2000;
 
 await run();
 
@@ -94,7 +98,7 @@ async function open(opening: Opening): Promise<void> {
   if (applied.length > 0) logger.info({ applied }, 'migrations applied');
 
   const database = await openDatabase({ url, poolSize: config.databasePoolSize });
-  closers.push(() => database.close());
+  closers.push(() => closeDatabase(database));
   const first = await ensureFirstAdministrator(database);
   if (first !== null) showFirstToken(first.token);
 
@@ -139,9 +143,17 @@ function showFirstToken(token: string): void {
 
 /** Takes no new connection, answers what is under way, and after `seconds` cuts what is left. */
 async function closeWithin(app: FastifyInstance, seconds: number): Promise<void> {
+  // A connection that was kept alive for more requests is idle only after its answer.
+  const idle = setInterval(() => app.server.closeIdleConnections(), IDLE_CHECK_MS);
   const late = setTimeout(() => app.server.closeAllConnections(), seconds * 1000);
   await app.close();
+  clearInterval(idle);
   clearTimeout(late);
+}
+
+/** A query of a request that was cut may still wait in the database: it is not waited for. */
+async function closeDatabase(database: Database): Promise<void> {
+  await Promise.race([database.close(), pause(DATABASE_CLOSE_MS_MAX)]);
 }
 
 /** Closes the last opened first, and everything even when something does not close well. */

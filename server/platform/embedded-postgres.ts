@@ -43,7 +43,7 @@ export interface EmbeddedPostgres {
 const USER = 'fairturn';
 const DATABASE = 'fairturn';
 
-/** Signals to PostgreSQL: fast shutdown ends sessions and writes a checkpoint; immediate does not. */
+/** Signals to PostgreSQL: fast ends sessions and writes a checkpoint; immediate does neither. */
 const FAST_SHUTDOWN = 'SIGINT';
 const IMMEDIATE_SHUTDOWN = 'SIGQUIT';
 
@@ -159,7 +159,7 @@ async function stopOrphan(cluster: string, log: (line: string) => void): Promise
   if (processBirth(pid) === null || !runsOn(pid, cluster)) {
     // PostgreSQL would take any process of that number for a server: another program that got the
     // number since, or a dead one that nobody has collected, as happens in containers. Its check of
-    // shared memory, which does not need the file, still refuses if sessions of the old server live.
+    // shared memory, which does not need the file, refuses while sessions of the old server live.
     rmSync(pidFile);
     return;
   }
@@ -196,7 +196,7 @@ interface Preparation {
   readonly log: (line: string) => void;
 }
 
-/** Makes the cluster at the first start, under another name until it is whole. Gives its password. */
+/** Gives the cluster's password; at the first start makes it, under another name until whole. */
 async function preparedCluster(preparation: Preparation): Promise<string> {
   const { folder, cluster } = preparation;
   const passwordFile = join(folder, 'database-password');

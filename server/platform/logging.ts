@@ -11,9 +11,11 @@ export interface LoggerOptions {
 
 const HIDDEN = '[hidden]';
 
+const SECRET_KEYS =
+  'authorization|proxy-authorization|cookie|set-cookie|password|passphrase|token|secret|salt|' +
+  'privateKey|databaseUrl|DATABASE_URL';
 /** A JSON string after one of these keys, whatever it holds. */
-const SECRET_FIELD =
-  /("(?:authorization|proxy-authorization|cookie|set-cookie|password|passphrase|token|secret|salt|privateKey|databaseUrl|DATABASE_URL)":)"(?:[^"\\]|\\.)*"/gi;
+const SECRET_FIELD = new RegExp(`("(?:${SECRET_KEYS})":)"(?:[^"\\\\]|\\\\.)*"`, 'gi');
 /** The service's own tokens, wherever they stand. */
 const TOKEN = /fairturn_[\w-]{20,}/g;
 const BEARER = /\b(bearer|basic)\s+[\w.~+/=-]+/gi;

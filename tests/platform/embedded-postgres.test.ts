@@ -127,7 +127,7 @@ describe('embedded PostgreSQL', () => {
       const refusal = await start(folder).catch((error: unknown) => error);
       expect(refusal).toBeInstanceOf(FolderLockedError);
       expect(String(refusal)).toContain(folder);
-      expect(String(refusal)).toContain(`process ${holder.pid}`);
+      expect(String(refusal)).toContain(`process, number ${holder.pid}`);
       // The first goes on undisturbed.
       expect(await query(url, 'select text from notes')).toEqual([{ text: 'kept' }]);
     } finally {

@@ -20,7 +20,8 @@ export async function factsOfCatalogue(sql: postgres.Sql): Promise<SchemaFacts> 
     select c.relname || '.' || a.attname || ': ' || format_type(a.atttypid, a.atttypmod)
       || case when a.attndims > 0 then '' when a.attnotnull then ', not null' else ', null' end
       || coalesce(', default ' || pg_get_expr(d.adbin, d.adrelid), '')
-      || case when a.attidentity <> '' or a.attgenerated <> '' then ', generated' else '' end as fact
+      || case when a.attidentity <> '' or a.attgenerated <> '' then ', generated' else '' end
+      as fact
     from pg_class c
       join pg_attribute a on a.attrelid = c.oid and a.attnum > 0 and not a.attisdropped
       left join pg_attrdef d on d.adrelid = c.oid and d.adnum = a.attnum
@@ -28,7 +29,8 @@ export async function factsOfCatalogue(sql: postgres.Sql): Promise<SchemaFacts> 
       and c.relname <> '_prisma_migrations'`;
   const indexes = await sql<{ fact: string }[]>`
     select c.relname || ': '
-      || case when i.indisprimary then 'primary key' when i.indisunique then 'unique' else 'index' end
+      || case when i.indisprimary then 'primary key'
+        when i.indisunique then 'unique' else 'index' end
       || ' (' || (
         select string_agg(replace(pg_get_indexdef(i.indexrelid, n, true), '"', ''), ', ' order by n)
         from generate_series(1, i.indnkeyatts) n

@@ -1,5 +1,7 @@
 import { type ChildProcess, spawn } from 'node:child_process';
 import { createInterface } from 'node:readline';
+import { setTimeout as pause } from 'node:timers/promises';
+import { afterAll } from 'vitest';
 
 export interface NodeProgram {
   readonly child: ChildProcess;
@@ -11,6 +13,19 @@ export interface NodeProgram {
   /** Exit code, or the signal's name. */
   readonly ended: Promise<number | NodeJS.Signals>;
 }
+
+const STOP_MS_MAX = 20_000;
+const started: NodeProgram[] = [];
+
+// Importing this module ends what the importing test file left running because a test failed:
+// first politely, so that a service stops its database too.
+afterAll(async () => {
+  for (const program of started) {
+    program.child.kill('SIGTERM');
+    await Promise.race([program.ended, pause(STOP_MS_MAX, undefined, { ref: false })]);
+    program.child.kill('SIGKILL');
+  }
+});
 
 /** Starts a program under the Node that runs the tests, with only the given environment. */
 export function startNodeProgram(
@@ -38,7 +53,7 @@ export function startNodeProgram(
   const ended = new Promise<number | NodeJS.Signals>((settle) => {
     child.once('close', (code, signal) => settle(signal ?? code ?? -1));
   });
-  return {
+  const running: NodeProgram = {
     child,
     pid: child.pid,
     output: () => output,
@@ -56,4 +71,6 @@ export function startNodeProgram(
         void ended.then((how) => fail(new Error(`${program} ended (${how}) first:\n${output}`)));
       }),
   };
+  started.push(running);
+  return running;
 }

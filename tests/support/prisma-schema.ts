@@ -24,7 +24,7 @@ const KEY_KINDS: Readonly<Record<string, string>> = {
   index: 'index',
 };
 
-/** PostgreSQL's name for the type that Prisma gives a field (Prisma reference, PostgreSQL types). */
+/** PostgreSQL's name for the type of a field (Prisma's reference, PostgreSQL types). */
 const PLAIN_TYPES: Readonly<Record<string, string>> = {
   String: 'text',
   Int: 'integer',
@@ -111,11 +111,12 @@ function factsOfModel(model: Model, models: readonly Model[]): string[] {
 
 function columnFact(model: Model, field: Field): string {
   // A list cannot be optional in Prisma, which says nothing of the column: it reads null as empty.
-  const nullable = field.optional ? ', null' : ', not null';
+  const optional = field.optional ? ', null' : ', not null';
+  const nullable = field.list ? '' : optional;
   const start = field.attributes.get('default');
   const ending = start === undefined ? '' : `, default ${start}`;
   const column = columnOf(model, field.name);
-  return `${model.table}.${column}: ${columnType(model, field)}${field.list ? '' : nullable}${ending}`;
+  return `${model.table}.${column}: ${columnType(model, field)}${nullable}${ending}`;
 }
 
 function columnType(model: Model, field: Field): string {
