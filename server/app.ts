@@ -11,6 +11,8 @@ import { accessRoutes } from '#server/access/routes.ts';
 import { createAccessService } from '#server/access/service.ts';
 import { auditRoutes } from '#server/audit/routes.ts';
 import { createAuditService } from '#server/audit/service.ts';
+import { studiesRoutes } from '#server/studies/routes.ts';
+import { createStudiesService } from '#server/studies/service.ts';
 
 export interface AppOptions {
   readonly config: Config;
@@ -32,7 +34,8 @@ export async function buildApp({ config, database, logger }: AppOptions): Promis
   await registerOpenApi(app);
 
   const access = createAccessService(database);
-  const audit = createAuditService({ database, maySeeStudy: async () => false });
+  const studies = createStudiesService(database);
+  const audit = createAuditService({ database, maySeeStudy: studies.maySeeStudy });
 
   installGuard(app, { authenticate: access.authenticate, permits, isOperation });
   registerHealth(app, database);
@@ -40,5 +43,6 @@ export async function buildApp({ config, database, logger }: AppOptions): Promis
   registerReference(app, rolesOf);
   await app.register(accessRoutes, { service: access });
   await app.register(auditRoutes, { service: audit });
+  await app.register(studiesRoutes, { service: studies });
   return app;
 }

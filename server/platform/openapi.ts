@@ -53,8 +53,8 @@ function withHeaders(schema: FastifySchema): FastifySchema {
 
 /**
  * Every named schema is written out twice, as what is read (`…Input`) and as what is answered; most
- * of those nothing refers to. Those are left out, and an `…Input` without its twin gets the plain
- * name.
+ * of those nothing refers to. Those are left out, and an `…Input` gets the plain name when its twin
+ * is left out or says the same.
  */
 function withoutUnusedSchemas<Document extends object>(document: Document): Document {
   const { components, paths }: OpenApiParts = JSON.parse(JSON.stringify(document));
@@ -66,9 +66,10 @@ function withoutUnusedSchemas<Document extends object>(document: Document): Docu
     used.add(name);
     queue.push(...referredIn(schemas[name]));
   }
+  const same = sameTwins(schemas);
   const renamed = (name: string): string => {
     const plain = name.replace(/Input$/, '');
-    return used.has(plain) ? name : plain;
+    return used.has(plain) && !same.has(plain) ? name : plain;
   };
   const kept = [...used]
     .map((name) => [renamed(name), schemas[name]] as const)
@@ -79,12 +80,31 @@ function withoutUnusedSchemas<Document extends object>(document: Document): Docu
   );
 }
 
+/** Names whose two forms say the same, and refer only to such names or to the same ones. */
+function sameTwins(schemas: Readonly<Record<string, unknown>>): Set<string> {
+  const plainText = (schema: unknown) => JSON.stringify(schema).replace(REFERENCE_INPUT, '"');
+  const twins = Object.keys(schemas).filter((name) => `${name}Input` in schemas);
+  const same = new Set(
+    twins.filter((name) => plainText(schemas[name]) === plainText(schemas[`${name}Input`])),
+  );
+  for (let before = -1; before !== same.size; ) {
+    before = same.size;
+    for (const name of same) {
+      const others = referredIn(schemas[name]);
+      if (others.some((other) => twins.includes(other) && !same.has(other))) same.delete(name);
+    }
+  }
+  return same;
+}
+
 interface OpenApiParts {
   readonly components?: { readonly schemas?: Readonly<Record<string, unknown>> };
   readonly paths?: unknown;
 }
 
 const REFERENCE = /"#\/components\/schemas\/([^"]+)"/g;
+
+const REFERENCE_INPUT = /(?<="#\/components\/schemas\/[^"]+)Input"/g;
 
 function reference(name: string): string {
   return JSON.stringify(`#/components/schemas/${name}`);

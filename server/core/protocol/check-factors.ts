@@ -11,9 +11,8 @@ export const STRATA_MAX = 256;
 export function factorFaults(protocol: Protocol): ProtocolFault[] {
   const { withinFactors, betweenFactors } = protocol;
   const faults: ProtocolFault[] = [
-    ...keyFaults(withinFactors, '/withinFactors', 'factor'),
+    ...withinFactorFaults(withinFactors),
     ...keyFaults(betweenFactors, '/betweenFactors', 'factor'),
-    ...levelFaults(withinFactors, '/withinFactors'),
     ...levelFaults(betweenFactors, '/betweenFactors'),
   ];
   const withinKeys = new Set(withinFactors.map(({ key }) => key));
@@ -22,6 +21,20 @@ export function factorFaults(protocol: Protocol): ProtocolFault[] {
     const message = `The factor "${key}" cannot be both within and between participants`;
     faults.push({ pointer: `/betweenFactors/${index}/key`, code: 'duplicate-key', message });
   }
+  const strataCount = cellCount(betweenFactors);
+  if (strataCount > STRATA_MAX) {
+    const message = `There are ${strataCount} strata, more than ${STRATA_MAX}`;
+    faults.push({ pointer: '/betweenFactors', code: 'too-many-strata', message });
+  }
+  return faults;
+}
+
+/** Faults of the within factors alone: keys, levels and the number of conditions. */
+export function withinFactorFaults(withinFactors: readonly Factor[]): ProtocolFault[] {
+  const faults: ProtocolFault[] = [
+    ...keyFaults(withinFactors, '/withinFactors', 'factor'),
+    ...levelFaults(withinFactors, '/withinFactors'),
+  ];
   const conditionCount = withinFactors.length === 0 ? 0 : cellCount(withinFactors);
   if (conditionCount < 2) {
     const message = `There must be at least two conditions, not ${conditionCount}`;
@@ -30,11 +43,6 @@ export function factorFaults(protocol: Protocol): ProtocolFault[] {
   if (conditionCount > CONDITIONS_MAX) {
     const message = `There are ${conditionCount} conditions, more than ${CONDITIONS_MAX}`;
     faults.push({ pointer: '/withinFactors', code: 'too-many-conditions', message });
-  }
-  const strataCount = cellCount(betweenFactors);
-  if (strataCount > STRATA_MAX) {
-    const message = `There are ${strataCount} strata, more than ${STRATA_MAX}`;
-    faults.push({ pointer: '/betweenFactors', code: 'too-many-strata', message });
   }
   return faults;
 }
