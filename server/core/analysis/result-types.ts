@@ -18,8 +18,6 @@ import type { ParticipantFlow } from './participant-flow.ts';
  * says why. The same protocol, snapshot and seed give the same tree.
  */
 export interface ResultTree {
-  /** Seed of whatever in the analysis draws random numbers; nothing does so far. */
-  readonly seed: string;
   readonly participantFlow: ParticipantFlow;
   readonly exclusions: ExclusionAccount;
   /** In the protocol's order of measures. */

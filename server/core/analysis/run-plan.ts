@@ -21,7 +21,7 @@ export class AnalysisStopped extends Error {
 }
 
 export interface RunPlanOptions {
-  /** Of whatever draws random numbers; kept in the result. */
+  /** Of whatever draws random numbers. */
   readonly seed: string;
   /** Called as each stage begins with the fraction done, 0 to 1, and at the end with 1. */
   readonly onProgress?: (fraction: number, stage: string) => void;
@@ -63,7 +63,7 @@ export function runPlan(
     return measureResult(data, measure, options.seed);
   });
   options.onProgress?.(1, 'finished');
-  return { seed: options.seed, participantFlow: flow, exclusions: account, measures };
+  return { participantFlow: flow, exclusions: account, measures };
 }
 
 function measureResult(data: AnalysisData, measure: Measure, seed: string): MeasureResult {
