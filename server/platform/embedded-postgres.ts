@@ -95,9 +95,9 @@ export async function startEmbeddedPostgres(
   if (!existsSync(folder)) mkdirSync(folder, { recursive: true, mode: 0o700 });
   const unlock = lockFolder(folder);
   try {
+    // The account that runs PostgreSQL for root must be able to pass through the folder, no more.
+    if (process.getuid?.() === 0) chmodSync(folder, (statSync(folder).mode & 0o7777) | 0o011);
     const programs = await findPostgresPrograms(cluster);
-    // The account that runs PostgreSQL must be able to pass through the folder, no more.
-    if (programs.account !== null) chmodSync(folder, statSync(folder).mode | 0o011);
     await stopOrphan(cluster, options.log);
     const password = await preparedCluster({ folder, cluster, programs, log: options.log });
     const durable = options.durable ?? true;

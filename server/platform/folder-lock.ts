@@ -22,8 +22,8 @@ const TRIES_MAX = 100;
 /**
  * Holds a folder for this process until the returned function is called or the process dies.
  *
- * The holder is the file `lock.N` with the highest N: process id, its birth (a reused id has another)
- * and host. A dead holder is succeeded by creating `lock.N+1`, which only one
+ * The holder is the file `lock.N` with the highest N: process id, its birth (a reused id has
+ * another) and host. A dead holder is succeeded by creating `lock.N+1`, which only one
  * process can: removing the dead one's file first would let two takers remove each other's.
  *
  * @throws {FolderLockedError} naming the folder and the holder's process id

@@ -190,6 +190,18 @@ describe('embedded PostgreSQL', () => {
     expect(readdirSync(folder).sort()).toEqual(['database-password', 'postgres']);
   });
 
+  test('runs in a folder within a closed one, which root must open to another account', async () => {
+    const closed = temporaryFolder();
+    expect(statSync(closed).mode & 0o077).toBe(0);
+    const server = await start(join(closed, 'data'));
+    try {
+      expect(await query(server.url, 'select 1 as one')).toEqual([{ one: 1 }]);
+    } finally {
+      await server.stop();
+    }
+    expect(statSync(closed).mode & 0o077).toBe(0);
+  });
+
   test('says so when the server ends by itself', async () => {
     const folder = temporaryFolder();
     const server = await start(folder);
