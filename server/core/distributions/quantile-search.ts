@@ -20,6 +20,9 @@ export function assertDegreesOfFreedom(degreesOfFreedom: number): void {
   }
 }
 
+/** log of the largest double, a little below: a root beyond it has no finite x. */
+const LOG_LARGEST = 709.78271;
+
 /**
  * The x > 0 at which the chosen tail equals p.
  *
@@ -35,6 +38,7 @@ export function assertDegreesOfFreedom(degreesOfFreedom: number): void {
  * @param tail    which tail p is
  * @param p       0 < p < 1
  * @param start   a first guess of x; anything unusable is replaced by 1
+ * @returns x; Infinity or 0 when it lies beyond the range of doubles
  */
 export function positiveQuantile(
   tailsAt: (x: number) => TailsAt,
@@ -52,6 +56,7 @@ export function positiveQuantile(
   const usable = start > 0 && Number.isFinite(start);
   const found = monotoneRoot((logX) => evaluate(Math.exp(logX)), usable ? Math.log(start) : 0);
   assert(found.stoppedBy !== 'limit', `the quantile search for ${tail} tail ${p} ends`);
+  if (found.root > LOG_LARGEST) return Number.POSITIVE_INFINITY;
   const x = Math.exp(found.root);
   const { value, slope } = evaluate(x);
   const correction = value / slope;
