@@ -32,10 +32,18 @@ export async function once<Body>(
   options: {
     readonly parse: (stored: unknown) => Body;
     readonly keep?: (body: Body) => Body;
-    readonly work: () => Promise<{ status: number; body: Body }>;
+    readonly work: () => Promise<{
+      status: number;
+      body: Body;
+      /** Whom the request is about, so that erasing the participant reaches what is kept of it. */
+      participantId?: string;
+    }>;
   },
 ): Promise<Answer<Body>> {
-  if (call.idempotency === null) return { ...(await options.work()), repeated: false };
+  if (call.idempotency === null) {
+    const { status, body } = await options.work();
+    return { status, body, repeated: false };
+  }
   const { key, requestHash } = call.idempotency;
   const { tokenId } = call.principal;
   const claimed = await executor.query(
@@ -58,12 +66,23 @@ export async function once<Body>(
     }
     return { status: first.status, body: options.parse(JSON.parse(first.body)), repeated: true };
   }
-  const answer = await options.work();
-  const kept = options.keep === undefined ? answer.body : options.keep(answer.body);
+  const { status, body, participantId } = await options.work();
+  const kept = options.keep === undefined ? body : options.keep(body);
   await executor.query(
-    `update idempotency_answers set status = $3::int, body = $4
+    `update idempotency_answers set status = $3::int, body = $4, participant_id = $5::uuid
      where token_id = $1::uuid and key = $2`,
-    [tokenId, key, answer.status, JSON.stringify(kept)],
+    [tokenId, key, status, JSON.stringify(kept), participantId ?? null],
   );
-  return { ...answer, repeated: false };
+  return { status, body, repeated: false };
+}
+
+/**
+ * Empties what is kept of requests about a participant: the hash of a request that holds a code is
+ * as good as the code. The keys stay used, so that such a request is refused when it comes again.
+ */
+export async function forgetAnswers(executor: Executor, participantId: string): Promise<void> {
+  await executor.query(
+    `update idempotency_answers set request_hash = '', body = '' where participant_id = $1::uuid`,
+    [participantId],
+  );
 }

@@ -54,6 +54,7 @@ CREATE TABLE idempotency_answers (
   request_hash text NOT NULL,
   status integer NOT NULL,
   body text NOT NULL,
+  participant_id uuid,
   created_at timestamptz(3) NOT NULL,
   CONSTRAINT idempotency_answers_pkey PRIMARY KEY (token_id, key)
 );
@@ -325,6 +326,7 @@ CREATE UNIQUE INDEX labs_name_key ON labs (name);
 CREATE UNIQUE INDEX sites_lab_id_name_key ON sites (lab_id, name);
 CREATE UNIQUE INDEX stations_site_id_name_key ON stations (site_id, name);
 CREATE UNIQUE INDEX tokens_hash_key ON tokens (hash);
+CREATE INDEX idempotency_answers_participant_id_idx ON idempotency_answers (participant_id);
 CREATE INDEX disclosures_participant_id_idx ON disclosures (participant_id);
 CREATE UNIQUE INDEX studies_lab_id_name_key ON studies (lab_id, name);
 CREATE UNIQUE INDEX slots_study_id_site_id_number_key ON slots (study_id, site_id, number);
