@@ -4,6 +4,10 @@
 # afex::aov_car for generalised eta squared. Huynh-Feldt: car, as mauchly.test's companions in R, uses
 # ((nu + 1) d e - 2) / (d (nu - d e)), which is Lecoutre's (1991) form; the script recomputes both
 # epsilons from the covariance of orthonormal contrasts and stops if they differ.
+# Mauchly's p: stats::mauchly.test on the contrast scores themselves. Asked about contrasts of the
+# cells instead, R 4.2.2 (and car) puts the number of cells for the number of contrasts in one term,
+# 3p, of the second-order correction, which moves p in its third digit; Anderson's formula has the
+# number of contrasts throughout.
 # Usage: Rscript repeated-measures-anova.R > repeated-measures-anova.json
 suppressMessages({
   library(car); library(afex); library(nlme); library(jsonlite)
@@ -25,13 +29,13 @@ analyse <- function(wide, within, between, name, measured = NULL) {
   effects <- lapply(setdiff(rownames(table), "(Intercept)"), function(term) {
     row <- table[term, ]
     entry <- list(
-      factors = strsplit(term, ":")[[1]],
+      factors = I(parts <- strsplit(term, ":")[[1]]),
       sumOfSquares = row[["Sum Sq"]], degreesOfFreedom = row[["num Df"]],
       errorSumOfSquares = row[["Error SS"]], errorDegreesOfFreedom = row[["den Df"]],
       fStatistic = row[["F value"]], pValue = row[["Pr(>F)"]]
     )
     if (term %in% rownames(corrections)) {
-      parts <- intersect(entry$factors, names(within))
+      parts <- intersect(parts, names(within))
       contrasts <- orthonormal(within, parts)
       S <- crossprod(residuals(fit) %*% contrasts) / nu
       d <- ncol(S)
@@ -48,10 +52,14 @@ analyse <- function(wide, within, between, name, measured = NULL) {
                            cap * entry$errorDegreesOfFreedom, lower.tail = FALSE)
       stopifnot(abs(entry$ggPValue - corrections[term, "Pr(>F[GG])"]) < 1e-9,
                 abs(entry$hfPValue - corrections[term, "Pr(>F[HF])"]) < 1e-9)
-      if (term %in% rownames(spheric)) {
-        entry$mauchlyW <- spheric[term, "Test statistic"]
-        entry$mauchlyP <- spheric[term, "p-value"]
-      }
+      # The contrast scores' own model, so that mauchly.test is asked about all its responses.
+      scores <- wide %*% contrasts
+      right <- if (is.null(between)) "1" else paste(names(between), collapse = "*")
+      formula <- as.formula(paste("scores ~", right))
+      own <- mauchly.test(if (is.null(between)) lm(formula) else lm(formula, data = data))
+      stopifnot(abs(own$statistic - spheric[term, "Test statistic"]) < 1e-9)
+      entry$mauchlyW <- own$statistic[[1]]
+      entry$mauchlyP <- own$p.value
     }
     entry
   })
@@ -66,7 +74,7 @@ analyse <- function(wide, within, between, name, measured = NULL) {
     call <- as.formula(paste("response ~", left, "+ Error(participant/(",
                              paste(names(within), collapse = "*"), "))"))
     model <- suppressMessages(aov_car(call, data = long, observed = observed, factorize = FALSE))
-    table <- anova(model, es = c("ges", "pes"))
+    table <- anova(model, es = c("ges", "pes"), observed = observed)
     list(ges = setNames(as.list(table$ges), rownames(table)),
          pes = setNames(as.list(table$pes), rownames(table)))
   }
