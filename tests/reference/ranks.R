@@ -3,7 +3,7 @@
 # have ties; ergoStool (nlme, ties); the depression scores of ?wilcox.test (Hollander & Wolfe 1973,
 # p. 29 f.); sleep (R datasets, with a zero difference and ties).
 # References: friedman.test; wilcox.test (exact without ties, and the normal approximation); for ties
-# the exact p-value by listing all 2^n signs, here. Usage: Rscript ranks.R > ranks.json
+# the exact p-value by listing all 2^n signs, here; psignrank beyond a hundred pairs. Usage: Rscript ranks.R > ranks.json
 suppressMessages({
   library(jsonlite); library(nlme)
 })
@@ -48,8 +48,16 @@ signed <- function(name, d) {
     entry$upper <- exact$conf.int[2]
     entry$achievedLevel <- attr(exact$conf.int, "conf.level")
   }
-  walsh <- outer(d, d, "+")[lower.tri(diag(length(d)), diag = TRUE)] / 2
+  walsh <- sort(outer(d, d, "+")[lower.tri(diag(length(d)), diag = TRUE)] / 2)
   entry$medianWalsh <- median(walsh)
+  if (length(d) > 100 && !anyDuplicated(abs(kept))) {
+    total <- length(d) * (length(d) + 1) / 2
+    smaller <- min(entry$statistic, total - entry$statistic)
+    entry$exactPValue <- 2 * psignrank(smaller, length(d))
+    depth <- qsignrank(0.025, length(d))
+    entry$lowerAround <- walsh[depth + -2:2]
+    entry$upperAround <- walsh[length(walsh) + 1 - depth + -2:2]
+  }
   entry
 }
 depression1 <- c(1.83, 0.50, 1.62, 2.48, 1.68, 1.88, 1.55, 3.06, 1.30)
@@ -57,6 +65,7 @@ depression2 <- c(0.878, 0.647, 0.598, 2.05, 1.06, 1.29, 1.06, 3.14, 1.29)
 set.seed(7, kind = "Mersenne-Twister")
 many <- round(rnorm(140, 0.2, 1), 2)
 thirty <- rnorm(30, 0.3, 1)
+hundred <- rnorm(120, 0.15, 1)
 write(toJSON(list(
   generator = "ranks.R",
   versions = list(R = R.version.string, nlme = as.character(packageVersion("nlme"))),
@@ -68,5 +77,6 @@ write(toJSON(list(
     signed("sleep (R datasets)", round(sleep$extra[11:20] - sleep$extra[1:10], 1)),
     signed("ergoStool (nlme), first two types", unname(ergo[, 1] - ergo[, 2])),
     signed("thirty seeded normal draws", thirty),
+    signed("120 seeded normal draws", hundred),
     signed("140 seeded normal draws, rounded so that they tie", many))),
   auto_unbox = TRUE, digits = NA, pretty = TRUE), stdout())
