@@ -1,0 +1,135 @@
+import type { OrderFit } from '../../analysis/result-types.ts';
+import type { Measure } from '../../protocol/protocol.ts';
+import { columnFigure } from '../figures.ts';
+import { html, type Markup } from '../html.ts';
+import { countText, intervalText, numberText, pValuePhrase, signedText } from '../number-text.ts';
+import {
+  cellSummaryText,
+  derivedDecimals,
+  labelWithUnit,
+  type MeasureOnPage,
+  type PageContext,
+  standingTag,
+  whyNot,
+} from '../page-context.ts';
+import { columns, heatTable, table } from '../table.ts';
+import { fTestText } from './omnibus.ts';
+
+/** What order did to every measure. */
+export function orderSection(context: PageContext): Markup {
+  return html`<p>Effects of period, adjusted for condition, from one least-squares fit of participant, condition
+and period. They are always estimated and shown; whether they are significant switches nothing. Effects
+of the previous condition (carryover) are not estimated here.</p>
+${context.measures.map((entry) => measurePart(entry, context))}`;
+}
+
+function measurePart({ measure, result }: MeasureOnPage, context: PageContext): Markup {
+  const { order, descriptives } = result;
+  const approximation = order.approximation
+    ? ' For this scale least squares is an approximation, good enough to see order.'
+    : '';
+  return html`<h3>${labelWithUnit(measure)} ${standingTag(order.standing)}</h3>
+${countsTable({ measure, result }, context)}
+${
+  order.fit.estimable
+    ? fitPart(order.fit, measure, order.summary === 'mean-logarithm', {
+        lead: `Response: the ${cellSummaryText(order.summary)} of a participant in a period.${approximation}`,
+        level: descriptives.withinParticipantIntervals.level,
+      })
+    : whyNot(order.fit, 'The effect of order')
+}`;
+}
+
+function countsTable(
+  { measure, result }: MeasureOnPage,
+  { body, conditionLabel }: PageContext,
+): Markup {
+  const { conditions, periods } = result.descriptives.byConditionAndPeriod.reduce(
+    (found, { condition, period }) => ({
+      conditions: found.conditions.add(condition),
+      periods: found.periods.add(period),
+    }),
+    { conditions: new Set<string>(), periods: new Set<number>() },
+  );
+  const cells = result.descriptives.byConditionAndPeriod;
+  return heatTable({
+    caption: `${measure.label}: participants with a value, by condition and period (of ${body.protocol.document.periods.count} periods)`,
+    corner: 'Condition',
+    columnHeads: [...periods].map((period) => `Period ${period}`),
+    rows: [...conditions].map((condition) => ({
+      head: conditionLabel(condition),
+      counts: cells
+        .filter((cell) => cell.condition === condition)
+        .map(({ summary }) => summary.participants),
+    })),
+  });
+}
+
+function fitPart(
+  fit: OrderFit,
+  measure: Measure,
+  isLogarithm: boolean,
+  text: { readonly lead: string; readonly level: number },
+): Markup {
+  const back = isLogarithm ? Math.exp : (value: number): number => value;
+  const decimals = derivedDecimals(measure);
+  const means = fit.periodMeans.flatMap((entry) => (entry.estimable ? [entry] : []));
+  const word = isLogarithm ? 'geometric mean' : 'mean';
+  const marks = means.map(({ period, mean, interval }) => ({
+    label: `Period ${period}`,
+    mean: back(mean),
+    lower: back(interval.lower),
+    upper: back(interval.upper),
+  }));
+  const stray = [
+    ...fit.notSeparable.periods.map((period) => `period ${period}`),
+    ...fit.notSeparable.conditions,
+  ];
+  return html`<p>${text.lead}</p>
+${
+  marks.length === 0
+    ? null
+    : columnFigure({
+        description: `Adjusted ${word} of ${measure.label} by period, with intervals.`,
+        caption: `Adjusted ${word} by period with ${Math.round(100 * text.level * 10) / 10} % intervals, conditions weighted equally; ${countText(fit.participants, 'participant')}, ${countText(fit.observations, 'observation')}.`,
+        axisLabel: labelWithUnit(measure),
+        marks,
+      })
+}
+${table({
+  caption: `${measure.label}: adjusted ${word}s by period`,
+  columns: columns(['Period'], [word === 'mean' ? 'Mean' : 'Geometric mean', 'Interval']),
+  rows: fit.periodMeans.map((entry) =>
+    entry.estimable
+      ? [
+          entry.period,
+          numberText(back(entry.mean), decimals),
+          `${numberText(back(entry.interval.lower), decimals)} to ${numberText(back(entry.interval.upper), decimals)}`,
+        ]
+      : [entry.period, '–', html`<code>${entry.reason}</code>`],
+  ),
+})}
+<p>All periods equal: ${fTestText(fit.periodTest)}</p>
+${trendPart(fit, measure, isLogarithm)}
+${
+  stray.length === 0
+    ? null
+    : html`<p class="note">The data cannot tell these effects from the others: ${stray.join(', ')}.</p>`
+}`;
+}
+
+function trendPart({ linearTrend }: OrderFit, measure: Measure, isLogarithm: boolean): Markup {
+  if (!linearTrend.estimable) return whyNot(linearTrend, 'The linear trend over periods');
+  const { estimate, interval, pValue } = linearTrend;
+  if (isLogarithm) {
+    const ends = { ...interval, lower: Math.exp(interval.lower), upper: Math.exp(interval.upper) };
+    return html`<p>Linear trend: from each period to the next, ${measure.label} changed by a factor of
+${numberText(Math.exp(estimate), 3)} (interval ${intervalText(ends, 3)}; ${pValuePhrase(pValue)}).</p>
+`;
+  }
+  const decimals = derivedDecimals(measure) + 1;
+  const unit = measure.unit === null ? '' : ` ${measure.unit}`;
+  return html`<p>Linear trend: from each period to the next, ${measure.label} changed by
+${signedText(estimate, decimals)}${unit} (interval ${signedText(interval.lower, decimals)} to ${signedText(interval.upper, decimals)}; ${pValuePhrase(pValue)}).</p>
+`;
+}
