@@ -41,6 +41,12 @@ async function stop(service: Service, signal: NodeJS.Signals): Promise<void> {
   expect(folderHolder(service.folder)).toBeNull();
 }
 
+/** The process of the first worker that says it is ready. */
+async function workerPid(program: NodeProgram): Promise<number> {
+  const line = await program.line(/"msg":"worker ready"/);
+  return Number(/"worker":(\d+)/.exec(line)?.[1]);
+}
+
 function postmasterLines(folder: string): string[] {
   return readFileSync(join(folder, 'postgres', 'postmaster.pid'), 'utf8').split('\n');
 }
@@ -100,13 +106,15 @@ async function blockLabs(folder: string) {
 describe('node server/main.ts', () => {
   test('starts, shows the first token once, answers, and stops without a trace', async () => {
     const folder = join(temporaryFolder(), 'data');
-    const first = await startService(folder);
+    const first = await startService(folder, { FAIRTURN_WORKERS: '2' });
     const token = TOKEN.exec(await first.program.line(TOKEN))?.[1] ?? '';
+    const worker = await workerPid(first.program);
     expect(await (await fetch(`${first.origin}/healthz`)).json()).toEqual({ status: 'alive' });
     expect(await (await fetch(`${first.origin}/readyz`)).json()).toEqual({ status: 'ready' });
     expect((await listLabs(first.origin, token)).status).toBe(200);
     expect((await listLabs(first.origin, `${token}x`)).status).toBe(401);
     await stop(first, 'SIGTERM');
+    expect(processBirth(worker)).toBeNull();
     expect(readdirSync(folder).sort()).toEqual(['database-password', 'postgres']);
     // Once on the screen, never in a log line.
     expect(first.program.output().split(token)).toHaveLength(2);
@@ -121,11 +129,14 @@ describe('node server/main.ts', () => {
 
   test('starts again after kill -9, with what it knew', async () => {
     const folder = temporaryFolder();
-    const first = await startService(folder);
+    const first = await startService(folder, { FAIRTURN_WORKERS: '1' });
     const token = TOKEN.exec(await first.program.line(TOKEN))?.[1] ?? '';
     const orphan = databasePid(folder);
+    const worker = await workerPid(first.program);
     process.kill(first.program.pid, 'SIGKILL');
     expect(await first.program.ended).toBe('SIGKILL');
+    // A worker notices that its service is gone.
+    while (processBirth(worker) !== null) await new Promise((settle) => setTimeout(settle, 10));
     expect(processBirth(orphan)).not.toBeNull();
 
     const second = await startService(folder);
