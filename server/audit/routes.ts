@@ -54,7 +54,7 @@ export const auditRoutes: FastifyPluginAsync<{ service: AuditService }> = async 
       schema: {
         operationId: 'makeCheckpoint',
         tags: ['audit'],
-        summary: 'Sign the heads of all chains; keep the answer outside the database',
+        summary: 'Sign the heads of the chains; keep the answer outside the database',
         response: { 201: CheckpointResponse },
       },
     },
@@ -75,7 +75,7 @@ export const auditRoutes: FastifyPluginAsync<{ service: AuditService }> = async 
         response: { 200: CheckpointPage },
       },
     },
-    (request) => service.listCheckpoints(request.query),
+    (request) => service.listCheckpoints(callOf(request), request.query),
   );
 
   app.post(

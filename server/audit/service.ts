@@ -56,21 +56,25 @@ export function createAuditService({ database, maySeeStudy }: AuditOptions) {
     },
 
     /**
-     * Signs the heads of all chains. The checkpoint is kept here too, but it proves something only
-     * where the database's administrators cannot reach it: a lab stores its copy elsewhere.
+     * Signs the heads of the chains that the caller may see. The checkpoint is kept here too, but it
+     * proves something only where the database's administrators cannot reach it: a lab stores its
+     * copy elsewhere.
      */
-    makeCheckpoint: (call: Call) =>
-      database.inSqlTransaction((tx) =>
+    makeCheckpoint: async (call: Call) => {
+      const chains = await visibleChains(call, undefined);
+      return await database.inSqlTransaction((tx) =>
         once(sqlExecutor(tx), call, {
           parse: (stored) => CheckpointResponse.parse(stored),
-          work: async () => ({ status: 201, body: await makeCheckpoint(tx, call) }),
+          work: async () => ({ status: 201, body: await makeCheckpoint(tx, call, chains) }),
         }),
-      ),
+      );
+    },
 
-    listCheckpoints: async (page: PageQuery) => {
+    listCheckpoints: async (call: Call, page: PageQuery) => {
+      const { labId } = call.principal;
       const after = decodeCursor(page.cursor, UUID_POSITION);
       const rows = await database.inSqlTransaction((tx) =>
-        store.selectCheckpoints(tx, after, page.limit + 1),
+        store.selectCheckpoints(tx, { labId, after, limit: page.limit + 1 }),
       );
       return cutPage(
         rows,
@@ -90,7 +94,11 @@ export function createAuditService({ database, maySeeStudy }: AuditOptions) {
     ): Promise<VerificationResponse> => {
       const key = await database.inSqlTransaction((tx) => ensureSigningKey(tx));
       const chains = await visibleChains(call, checkpoint);
-      return await database.inSqlTransaction((tx) => verifyChains(tx, key, chains, checkpoint));
+      return await database.inSqlTransaction(async (tx) => {
+        // Entries and heads as of one moment, whatever is appended meanwhile.
+        await tx`set transaction isolation level repeatable read`;
+        return await verifyChains(tx, key, chains, checkpoint);
+      });
     },
   };
 
@@ -114,7 +122,11 @@ export async function ensureSigningKey(tx: SqlTransaction): Promise<SigningKey> 
   return signingKeyFrom(await store.ensureKey(tx, KEY_NAME, newPrivateKey, new Date()));
 }
 
-async function makeCheckpoint(tx: SqlTransaction, call: Call): Promise<CheckpointResponse> {
+async function makeCheckpoint(
+  tx: SqlTransaction,
+  call: Call,
+  chains: readonly string[],
+): Promise<CheckpointResponse> {
   const key = await ensureSigningKey(tx);
   const id = uuidv7();
   await appendEntry(sqlExecutor(tx), {
@@ -125,19 +137,24 @@ async function makeCheckpoint(tx: SqlTransaction, call: Call): Promise<Checkpoin
     details: { keyId: key.keyId },
     at: call.now,
   });
-  const document = await checkpointDocument(tx, key, call.now);
+  const document = await checkpointDocument(tx, key, chains, call.now);
   const row = { id, document, signature: signDocument(key, document), createdAt: call.now };
-  await store.insertCheckpoint(tx, row);
+  await store.insertCheckpoint(tx, row, call.principal.labId);
   return { ...row, createdAt: call.now.toISOString() };
 }
 
-async function checkpointDocument(tx: SqlTransaction, key: SigningKey, now: Date): Promise<string> {
-  const chains: { chain: string; number: number; hash: string }[] = [];
-  for (const chain of await store.selectChains(tx)) {
+async function checkpointDocument(
+  tx: SqlTransaction,
+  key: SigningKey,
+  chains: readonly string[],
+  now: Date,
+): Promise<string> {
+  const heads: { chain: string; number: number; hash: string }[] = [];
+  for (const chain of chains) {
     const head = await store.selectHead(tx, chain);
-    if (head !== null) chains.push({ chain, ...head });
+    if (head !== null) heads.push({ chain, ...head });
   }
-  return canonicalJson({ chains, keyId: key.keyId, madeAt: now.toISOString() });
+  return canonicalJson({ chains: heads, keyId: key.keyId, madeAt: now.toISOString() });
 }
 
 async function isVisible(

@@ -139,20 +139,28 @@ export interface StoredCheckpoint {
   readonly createdAt: Date;
 }
 
-export async function insertCheckpoint(tx: SqlTransaction, row: StoredCheckpoint): Promise<void> {
+/** @param labId the lab whose chains the checkpoint vouches for; null for the whole service */
+export async function insertCheckpoint(
+  tx: SqlTransaction,
+  row: StoredCheckpoint,
+  labId: string | null,
+): Promise<void> {
   await tx`
-    insert into audit_checkpoints (id, document, signature, created_at)
-    values (${row.id}, ${row.document}, ${row.signature}, ${row.createdAt})`;
+    insert into audit_checkpoints (id, lab_id, document, signature, created_at)
+    values (${row.id}, ${labId}, ${row.document}, ${row.signature}, ${row.createdAt})`;
 }
 
+/** Checkpoints of one lab, or all of them when `labId` is null. */
 export async function selectCheckpoints(
   tx: SqlTransaction,
-  after: string | null,
-  limit: number,
+  filter: { labId: string | null; after: string | null; limit: number },
 ): Promise<StoredCheckpoint[]> {
+  const { labId, after, limit } = filter;
   return await tx<StoredCheckpoint[]>`
     select id, document, signature, created_at as "createdAt" from audit_checkpoints
-    where ${after}::uuid is null or id > ${after}::uuid order by id limit ${limit}`;
+    where (${labId}::uuid is null or lab_id = ${labId}::uuid)
+      and (${after}::uuid is null or id > ${after}::uuid)
+    order by id limit ${limit}`;
 }
 
 /** The key under `name`, made by `make` at first start. Safe with two starts at once. */

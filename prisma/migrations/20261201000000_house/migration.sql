@@ -85,6 +85,7 @@ CREATE TABLE audit_entries (
 
 CREATE TABLE audit_checkpoints (
   id uuid NOT NULL,
+  lab_id uuid,
   document text NOT NULL,
   signature text NOT NULL,
   created_at timestamptz(3) NOT NULL,
