@@ -23,7 +23,7 @@ const Compose = z.object({
 const text = readFileSync(new URL('../../docker-compose.yml', import.meta.url), 'utf8');
 const { services, volumes } = Compose.parse(parse(text, { merge: true }));
 
-/** As compose does it for the forms that the file uses: `${NAME:-default}` and `${NAME:?message}`. */
+/** As compose does it for the file's two forms, `${NAME:-default}` and `${NAME:?message}`. */
 function interpolated(environment: Record<string, string>): Record<string, string> {
   return Object.fromEntries(
     Object.entries(environment).map(([name, value]) => [

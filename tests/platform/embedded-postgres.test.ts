@@ -190,7 +190,7 @@ describe('embedded PostgreSQL', () => {
     expect(readdirSync(folder).sort()).toEqual(['database-password', 'postgres']);
   });
 
-  test('runs in a folder within a closed one, which root must open to another account', async () => {
+  test('runs in a folder within a closed one, without opening that', async () => {
     const closed = temporaryFolder();
     expect(statSync(closed).mode & 0o077).toBe(0);
     const server = await start(join(closed, 'data'));
