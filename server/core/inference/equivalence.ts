@@ -6,7 +6,8 @@ import type { EquivalenceInput, EquivalenceTest } from './inference-types.ts';
  * Two one-sided tests that a difference lies inside its margins.
  *
  * Each margin is tested at alpha, and equivalence is shown when both are passed, which is when the
- * 1 − 2·alpha interval lies within them. Source: Schuirmann 1987 (J. Pharmacokinet. Biopharm. 15:657).
+ * 1 − 2·alpha interval lies within them.
+ * Source: Schuirmann 1987 (J. Pharmacokinet. Biopharm. 15:657).
  *
  * @param input margins in the unit of the estimate, lower < upper; alpha in (0, ½)
  * @throws {DomainError} outside that domain, or when the standard error is not positive

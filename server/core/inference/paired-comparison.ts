@@ -11,8 +11,8 @@ import type { PairedComparison, StandardisedDifference } from './inference-types
  * Two conditions compared on the same participants: paired t test, interval, and two standardised
  * differences, both times Hedges' correction.
  *
- * - d_z, over the standard deviation of the differences; large-sample variance 1/n + d²/(2n), Gibbons,
- *   Hedeker & Davis 1993 (J. Educ. Stat. 18:271).
+ * - d_z, over the standard deviation of the differences; large-sample variance 1/n + d²/(2n),
+ *   Gibbons, Hedeker & Davis 1993 (J. Educ. Stat. 18:271).
  * - d_av, over the root mean of the two conditions' variances, comparable with studies between
  *   participants; Cumming, Understanding the New Statistics, 2012, ch. 11, with the variance of
  *   Bonett 2008 (Psychol. Methods 13:99).

@@ -33,8 +33,8 @@ import { type DesignTerm, type PeriodDesign, periodDesign, termWeights } from '.
  * value is allowed, and what the data cannot tell apart is reported, not guessed. Type III tests
  * adjust each of condition and period for the other. Adjusted means weigh participants, and
  * periods or conditions, equally, and their standard errors speak of these participants and
- * periods, not of a population. Conditions or periods without observations are left out of tests and
- * means, and named in `rank`.
+ * periods, not of a population. Conditions or periods without observations are left out of tests
+ * and means, and named in `rank`.
  *
  * Source: Jones & Kenward, Design and Analysis of Cross-Over Trials, 3rd ed., ch. 5; estimable
  * functions as in Searle, Linear Models, 1971, §5.4.

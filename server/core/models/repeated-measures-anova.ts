@@ -39,8 +39,8 @@ import { sphericityOf } from './sphericity.ts';
  * is the effect, every error stratum, and the other effects that contain a measured factor.
  *
  * @returns per effect a test, or why there is none; no number in it is NaN or infinite
- * @throws {DomainError} when the table contradicts itself, a value is not finite or beyond 1e100, or
- *   a measured factor is not a between factor
+ * @throws {DomainError} when the table contradicts itself, a value is not finite or beyond 1e100,
+ *   or a measured factor is not a between factor
  */
 export function repeatedMeasuresAnova(
   table: RepeatedMeasuresTable,

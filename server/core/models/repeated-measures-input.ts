@@ -40,8 +40,9 @@ export function completeTable(table: RepeatedMeasuresTable): CompleteTable | Not
   const incomplete: string[] = [];
   participants.forEach((participant, row) => {
     if (participant.values.length !== cells) {
+      const given = participant.values.length;
       throw new DomainError(
-        `Participant ${participant.key} has ${participant.values.length} values for ${cells} cells.`,
+        `Participant ${participant.key} has ${given} values for ${cells} cells.`,
       );
     }
     if (participant.values.some((value) => value === null)) incomplete.push(participant.key);
@@ -86,7 +87,7 @@ function faultOf({ cells, participants, incomplete, groups }: Counts): NotEstima
   if (incomplete.length > 0) {
     return notEstimable(
       'incomplete-data',
-      `${incomplete.length} of ${participants} participants lack a value: the table must be complete.`,
+      `${incomplete.length} of ${participants} participants lack a value in some cell.`,
     );
   }
   if (participants <= groups) {

@@ -2,8 +2,8 @@
  * The exact null distribution of the signed-rank sum: every rank is in the sum or not, each with
  * probability one half, independently.
  *
- * By the shift algorithm (Streitberg & Röhmel 1986; Wilcoxon, Katti & Wilcox 1970): the distribution
- * of one more rank is the mean of the old one and the old one shifted by that rank. Ranks are
+ * By the shift algorithm (Streitberg & Röhmel 1986; Wilcoxon, Katti & Wilcox 1970): the
+ * distribution with one more rank is the mean of the old one and the old one shifted by that rank. Ranks are
  * doubled, so that mid-ranks of ties are whole numbers.
  *
  * @param doubledRanks twice the ranks, whole numbers
