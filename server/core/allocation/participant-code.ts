@@ -95,6 +95,14 @@ export function issueParticipantCode(randomBytes: (count: number) => Uint8Array)
 }
 
 /**
+ * Whether a code has the form of those that `issueParticipantCode` gives, in either case, whatever
+ * its check character. A lab's own code can have that form by chance.
+ */
+export function hasIssuedForm(code: string): boolean {
+  return new RegExp(`^[${LETTERS}][${UNAMBIGUOUS}]{${BODY_LENGTH}}$`, 'i').test(code);
+}
+
+/**
  * Null when a byte lies above the largest multiple of the alphabet: a remainder would be biased.
  */
 function bodyFrom(bytes: Uint8Array): string | null {
