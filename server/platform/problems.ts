@@ -35,6 +35,7 @@ export const problems = {
   'correction-not-possible': { status: 409, title: 'There is no such trial to correct' },
   'analysis-finished': { status: 409, title: 'The analysis has ended already' },
   'snapshot-erased': { status: 410, title: 'Data under this report were erased since' },
+  'report-altered': { status: 500, title: 'The report is no longer what was filed' },
   'audit-broken': { status: 409, title: 'The audit chain does not verify' },
   'payload-too-large': { status: 413, title: 'The request body is too large' },
   'unsupported-media-type': { status: 415, title: 'The media type of the body is not read here' },

@@ -1,0 +1,97 @@
+import { randomBytes } from 'node:crypto';
+import {
+  canonicalSnapshotBody,
+  type SnapshotBody,
+  type StoredContent,
+  snapshotSha256,
+  splitSnapshot,
+} from '#core/analysis/snapshot.ts';
+import { canonicalJson, jsonValueOf } from '#core/hashing/canonical-json.ts';
+import { type Database, type SqlTransaction, sqlExecutor } from '#platform/database.ts';
+import { uuidv7 } from '#platform/ids.ts';
+import { countLooks, recordLook } from '#server/audit/log.ts';
+import { type Reading, readStudy } from './read-study.ts';
+import { requesterOf } from './requester.ts';
+import * as store from './store.ts';
+import * as snapshotStore from './store-snapshots.ts';
+
+/** Readings that may turn out stale, because somebody was erased meanwhile, before giving up. */
+const READINGS_MAX = 5;
+
+/** Bytes of the salt of each commitment. */
+const SALT_BYTES = 16;
+
+/**
+ * Freezes the data of a study for an analysis; a second call for the same analysis gives what the
+ * first one froze. Audit `looked` and `snapshot-frozen`.
+ *
+ * The data are read in one REPEATABLE READ transaction that changes nothing and therefore makes no
+ * station wait. A second, short transaction stores them and counts the look. Should a participant
+ * have been erased in between, nothing is stored and the reading starts again; an erasure that
+ * comes later finds what was stored here (see `forgetSnapshotParticipant`).
+ *
+ * @returns the snapshot's id
+ */
+export async function freezeSnapshot(
+  database: Database,
+  analysis: store.TakenAnalysis,
+): Promise<string> {
+  for (let reading = 1; reading <= READINGS_MAX; reading += 1) {
+    const study = await database.inSqlTransaction(async (tx) => {
+      await tx`set transaction isolation level repeatable read, read only`;
+      return await readStudy(tx, database.records, analysis);
+    });
+    const { body, contents } = splitSnapshot(study.snapshot, () => randomBytes(SALT_BYTES));
+    const id = await database.inSqlTransaction((tx) =>
+      storeSnapshot(tx, analysis, { study, body, contents }),
+    );
+    if (id !== null) return id;
+  }
+  throw new Error(`Participants were erased during each of ${READINGS_MAX} readings.`);
+}
+
+/** Null when what was read is no longer what may be kept. */
+async function storeSnapshot(
+  tx: SqlTransaction,
+  analysis: store.TakenAnalysis,
+  read: { study: Reading; body: SnapshotBody; contents: readonly StoredContent[] },
+): Promise<string | null> {
+  const withContent = read.contents.map(({ content }) => content.participantId);
+  if ((await snapshotStore.lockKeptParticipants(tx, withContent)) < withContent.length) return null;
+  const now = await store.lockAnalysis(tx, analysis.id);
+  if (now === null) throw new Error(`The analysis ${analysis.id} is gone.`);
+  if (now.snapshotId !== null) return now.snapshotId;
+
+  const { studyId } = analysis;
+  const at = new Date();
+  const id = uuidv7();
+  const executor = sqlExecutor(tx);
+  await recordLook(executor, {
+    studyId,
+    kind: 'analysis',
+    duringEnrolment: read.body.enrolment !== 'closed',
+    actor: requesterOf(analysis),
+    subject: analysis.id,
+    details: { participants: withContent.length, ...read.study.accounted },
+    at,
+  });
+  const body: SnapshotBody = { ...read.body, looks: await countLooks(executor, studyId) };
+  await snapshotStore.insertSnapshot(tx, {
+    id,
+    studyId,
+    sha256: snapshotSha256(body),
+    body: canonicalSnapshotBody(body),
+    createdAt: at,
+  });
+  await snapshotStore.insertSnapshotParticipants(
+    tx,
+    read.contents.map(({ salt, content }) => ({
+      snapshotId: id,
+      participantId: content.participantId,
+      salt,
+      content: canonicalJson(jsonValueOf(content)),
+    })),
+  );
+  await store.updateSnapshot(tx, analysis.id, id);
+  return id;
+}
