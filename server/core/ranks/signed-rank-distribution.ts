@@ -3,8 +3,8 @@
  * probability one half, independently.
  *
  * By the shift algorithm (Streitberg & Röhmel 1986; Wilcoxon, Katti & Wilcox 1970): the
- * distribution with one more rank is the mean of the old one and the old one shifted by that rank. Ranks are
- * doubled, so that mid-ranks of ties are whole numbers.
+ * distribution with one more rank is the mean of the old one and the old one shifted by that rank.
+ * Ranks are doubled, so that mid-ranks of ties are whole numbers.
  *
  * @param doubledRanks twice the ranks, whole numbers
  * @returns probability by doubled sum, from 0 to the sum of all doubled ranks

@@ -20,8 +20,8 @@ const EXACT_PAIRS_MAX = 100;
  * approximation with tie-corrected variance and continuity correction (Hollander & Wolfe,
  * Nonparametric Statistical Methods, 2nd ed., §3.1). Effect: matched-pairs rank-biserial
  * (W⁺ − W⁻)/(W⁺ + W⁻), Kerby 2014 (Compr. Psychol. 3:1). The estimate of Hodges & Lehmann 1963
- * (Ann. Math. Stat. 34:598) and its interval (§3.3 of the same book) use all differences, zeros included:
- * a zero says where the centre is, though not on which side.
+ * (Ann. Math. Stat. 34:598) and its interval (§3.3 of the same book) use all differences, zeros
+ * included: a zero says where the centre is, though not on which side.
  *
  * Differences are compared as given: when they come from decimal data, round them to the measure's
  * decimals first, or equal differences will not be seen as ties.
