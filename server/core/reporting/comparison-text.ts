@@ -1,7 +1,14 @@
 import type { Comparison, ComparisonEstimate, ComparisonSet } from '../analysis/result-types.ts';
 import type { Measure } from '../protocol/protocol.ts';
 import { html, type Markup } from './html.ts';
-import { intervalText, numberText, percentText, pValuePhrase, signedText } from './number-text.ts';
+import {
+  intervalText,
+  numberText,
+  percentText,
+  pValuePhrase,
+  signedIntervalText,
+  signedText,
+} from './number-text.ts';
 import { derivedDecimals, type PageContext } from './page-context.ts';
 
 /** Decimals of a ratio of geometric means. */
@@ -19,13 +26,15 @@ export function comparisonSentence(
   const first = context.conditionLabel(comparison.first);
   const second = context.conditionLabel(comparison.second);
   if (!comparison.estimable) {
-    return html`<div class="finding"><p><strong>${first} compared with ${second}</strong> could not be
+    return html`<div class="finding">
+<p><strong>${first} compared with ${second}</strong> could not be
 estimated: ${comparison.detail} <code>${comparison.reason}</code></p></div>
 `;
   }
   const adjusted = set.multiplicity === 'none' ? 'not adjusted' : 'adjusted';
   return html`<div class="finding"><p><strong>${first} compared with ${second}.</strong>
-${estimateText(comparison, measure, first, second)}; ${adjusted} ${pValuePhrase(comparison.adjustedPValue)}.</p>
+${estimateText(comparison, measure, first, second)}; ${adjusted}
+${pValuePhrase(comparison.adjustedPValue)}.</p>
 <p>${whatItDoesNotSay(comparison, set)}</p></div>
 `;
 }
@@ -45,26 +54,40 @@ function estimateText(
       : `no interval: ${ratio.detail}`;
     const change = percentText(Math.abs(value - 1));
     const direction = value >= 1 ? 'above' : 'below';
-    return `${measure.label} under ${first} was estimated at ${numberText(value, RATIO_DECIMALS)} times that under ${second}, ${change} ${direction} it (${ends})`;
+    const times = numberText(value, RATIO_DECIMALS);
+    return (
+      `${measure.label} under ${first} was estimated at ${times} times that under ${second}, ` +
+      `${change} ${direction} it (${ends})`
+    );
   }
   const decimals = derivedDecimals(measure);
   const unit = measure.unit === null ? '' : ` ${measure.unit}`;
   const ends = interval.estimable
-    ? `${level} interval of the difference ${signedText(interval.lower, decimals)} to ${signedText(interval.upper, decimals)}${unit}`
+    ? `${level} interval of the difference ${signedIntervalText(interval, decimals)}${unit}`
     : `no interval: ${interval.detail}`;
   const size = numberText(Math.abs(estimate), decimals);
   if (!/[1-9]/.test(size)) {
-    return `${measure.label} was estimated to be the same under both to the decimals shown (${ends})`;
+    return `${measure.label} was estimated the same under both, to the decimals shown (${ends})`;
   }
   const direction = estimate > 0 ? 'higher' : 'lower';
-  return `${measure.label} was estimated ${size}${unit} ${direction} under ${first} than under ${second} (${ends})`;
+  return (
+    `${measure.label} was estimated ${size}${unit} ${direction} under ${first} ` +
+    `than under ${second} (${ends})`
+  );
 }
 
 function whatItDoesNotSay(comparison: ComparisonEstimate, { alpha }: ComparisonSet): string {
   if (comparison.adjustedPValue <= alpha) {
-    return `At the registered level of ${percentText(alpha)} the data speak against there being no difference. That does not say that the difference is large enough to matter: judge that by the interval.`;
+    return (
+      `At the registered level of ${percentText(alpha)} the data speak against there being no ` +
+      'difference. That does not say that the difference is large enough to matter: judge that ' +
+      'by the interval.'
+    );
   }
-  return 'The data do not settle whether there is a difference. That does not say that the two conditions are alike: every value in the interval is compatible with the data.';
+  return (
+    'The data do not settle whether there is a difference. That does not say that the two ' +
+    'conditions are alike: every value in the interval is compatible with the data.'
+  );
 }
 
 /** The effect size in the trade's usual form, with its interval where it has one. */

@@ -36,16 +36,19 @@ export function rowFigure(input: FigureInput): Markup {
     const y = top + (index + 0.5) * rowHeight;
     const [from, to] = [x(mark.lower), x(mark.upper)];
     return html`<text x="${left - 12}" y="${at(y + 4)}" text-anchor="end">${cut(mark.label)}</text>
-<path class="interval" d="M${from} ${at(y)}H${to}M${from} ${at(y - 5)}V${at(y + 5)}M${to} ${at(y - 5)}V${at(y + 5)}" />
+<path class="interval" d="M${from} ${at(y)}H${to}" />
+<path class="interval" d="M${from} ${at(y - 5)}V${at(y + 5)}M${to} ${at(y - 5)}V${at(y + 5)}" />
 <circle class="mean" cx="${x(mark.mean)}" cy="${at(y)}" r="4.5" />
 `;
   });
   const ticks = axis.ticks.map(
     (tick) => html`<path class="grid" d="M${x(tick)} ${top}V${bottom}" />
-<text x="${x(tick)}" y="${bottom + 18}" text-anchor="middle">${numberText(tick, axis.decimals)}</text>
+<text x="${x(tick)}" y="${bottom + 18}" text-anchor="middle">${tickText(axis, tick)}</text>
 `,
   );
-  const title = html`<text class="axis" x="${(left + WIDTH - right) / 2}" y="${bottom + 40}" text-anchor="middle">${input.axisLabel}</text>`;
+  const middle = (left + WIDTH - right) / 2;
+  const place = html`x="${middle}" y="${bottom + 40}" text-anchor="middle"`;
+  const title = html`<text class="axis" ${place}>${input.axisLabel}</text>`;
   return figure(input, bottom + 52, [...ticks, ...rows, title]);
 }
 
@@ -61,18 +64,21 @@ export function columnFigure(input: FigureInput): Markup {
     const x = left + (index + 0.5) * width;
     const [from, to] = [y(mark.lower), y(mark.upper)];
     return html`<text x="${at(x)}" y="${bottom + 20}" text-anchor="middle">${cut(mark.label)}</text>
-<path class="interval" d="M${at(x)} ${from}V${to}M${at(x - 5)} ${from}H${at(x + 5)}M${at(x - 5)} ${to}H${at(x + 5)}" />
+<path class="interval" d="M${at(x)} ${from}V${to}" />
+<path class="interval" d="M${at(x - 5)} ${from}H${at(x + 5)}M${at(x - 5)} ${to}H${at(x + 5)}" />
 <circle class="mean" cx="${at(x)}" cy="${y(mark.mean)}" r="4.5" />
 `;
   });
   const line = marks.map((mark, index) => `${centre(index)},${y(mark.mean)}`).join(' ');
   const ticks = axis.ticks.map(
     (tick) => html`<path class="grid" d="M${left} ${y(tick)}H${WIDTH - right}" />
-<text x="${left - 10}" y="${at(Number(y(tick)) + 4)}" text-anchor="end">${numberText(tick, axis.decimals)}</text>
+<text x="${left - 10}" y="${y(tick)}" dy="4" text-anchor="end">${tickText(axis, tick)}</text>
 `,
   );
   const middle = (top + bottom) / 2;
-  const title = html`<text class="axis" x="18" y="${middle}" text-anchor="middle" transform="rotate(-90 18 ${middle})">${input.axisLabel}</text>`;
+  const turned = html`transform="rotate(-90 18 ${middle})"`;
+  const place = html`x="18" y="${middle}" text-anchor="middle" ${turned}`;
+  const title = html`<text class="axis" ${place}>${input.axisLabel}</text>`;
   const joined = html`<polyline class="joined" points="${line}" />\n`;
   return figure(input, bottom + 34, [...ticks, joined, ...columns, title]);
 }
@@ -95,6 +101,10 @@ function axisOf(marks: readonly Mark[]): Axis {
 /** From a value to a coordinate, as text with one decimal. */
 function scale({ minimum, maximum }: Axis, from: number, to: number): (value: number) => string {
   return (value) => at(from + ((value - minimum) / (maximum - minimum)) * (to - from));
+}
+
+function tickText({ decimals }: Axis, tick: number): string {
+  return numberText(tick, decimals);
 }
 
 function at(coordinate: number): string {

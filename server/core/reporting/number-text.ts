@@ -41,6 +41,11 @@ export function intervalText({ lower, upper }: ConfidenceInterval, decimals: num
   return `${numberText(lower, decimals)} to ${numberText(upper, decimals)}`;
 }
 
+/** `−0.31 to +1.20`, for differences. */
+export function signedIntervalText({ lower, upper }: ConfidenceInterval, decimals: number): string {
+  return `${signedText(lower, decimals)} to ${signedText(upper, decimals)}`;
+}
+
 /** `95 %`, `97.5 %`. */
 export function percentText(fraction: number, decimals = 1): string {
   const text = numberText(100 * fraction, decimals);

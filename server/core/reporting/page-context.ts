@@ -68,13 +68,26 @@ export function cellSummaryText(summary: CellSummary): string {
   }
 }
 
+/** The two estimates that stand side by side, in words. */
+export const ESTIMATES = {
+  'adjusted-for-period': 'adjusted for period',
+  unadjusted: 'not adjusted for period',
+} as const;
+
+/** A reason code in a table's cell. */
+export function reasonCell({ reason }: NotEstimable): Markup {
+  return html`<code>${reason}</code>`;
+}
+
 /** The word that says whether the registered plan foresaw a result. */
-export function standingTag(standing: Standing): Markup {
-  return html`<span class="tag ${standing}">${standing}</span>`;
+export function standingTag(standing: Standing, role: string | null = null): Markup {
+  const text = role === null ? standing : `${role}, ${standing}`;
+  return html`<span class="tag ${standing}">${text}</span>`;
 }
 
 /** What stands where a number cannot. */
 export function whyNot({ detail, reason }: NotEstimable, what: string): Markup {
-  return html`<p class="not-estimable">${what} could not be estimated: ${detail} <code>${reason}</code></p>
+  return html`<p class="not-estimable">${what} could not be estimated: ${detail}
+<code>${reason}</code></p>
 `;
 }

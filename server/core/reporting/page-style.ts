@@ -1,4 +1,4 @@
-/** The page's own style sheet: readable on a screen and on paper, without colour alone as a sign. */
+/** The page's own style sheet, for screen and paper; colour is never the only sign. */
 export const PAGE_STYLE = `
 :root { color-scheme: light; --ink: #23272b; --soft: #59636b; --line: #cfd6d3; --wash: #f3f5f2;
   --mark: #1d5c63; --warm: #9a4a12; }
@@ -8,7 +8,8 @@ body { margin: 0 auto; padding: 2rem 1.5rem 4rem; max-width: 62rem; color: var(-
 h1, h2, h3, h4, th, caption, figcaption, svg text, .tag, nav, dt {
   font-family: "Helvetica Neue", Arial, sans-serif; }
 h1 { font-size: 1.9rem; line-height: 1.2; margin: 0 0 .4rem; overflow-wrap: anywhere; }
-h2 { font-size: 1.35rem; margin: 3rem 0 .8rem; padding-top: .8rem; border-top: 3px solid var(--mark); }
+h2 { font-size: 1.35rem; margin: 3rem 0 .8rem; padding-top: .8rem;
+  border-top: 3px solid var(--mark); }
 h3 { font-size: 1.1rem; margin: 2rem 0 .5rem; }
 h4 { font-size: .98rem; margin: 1.4rem 0 .3rem; }
 p, ul, dl { max-width: 46rem; }
@@ -19,12 +20,14 @@ dt { color: var(--soft); font-size: .9rem; padding-top: .1rem; }
 dd { margin: 0; overflow-wrap: anywhere; }
 code { font: .86em "DejaVu Sans Mono", Menlo, Consolas, monospace; }
 .table { overflow-x: auto; margin: 1.1rem 0; }
-table { border-collapse: collapse; font-size: .9rem; font-variant-numeric: tabular-nums; }
+table { border-collapse: collapse; min-width: 26rem; font-size: .9rem; font-variant-numeric:
+tabular-nums; }
 caption { text-align: left; font-weight: 600; font-size: .92rem; padding-bottom: .45rem; }
 th, td { padding: .3rem .7rem; text-align: left; vertical-align: top;
   border-bottom: 1px solid var(--line); }
 thead th { border-bottom: 2px solid var(--soft); font-size: .82rem; vertical-align: bottom; }
 tbody th { font-weight: 500; font-size: .88rem; }
+td.phrase { white-space: nowrap; }
 th.number, td.number { text-align: right; white-space: nowrap; }
 .heat td { min-width: 4rem; text-align: center; border: 1px solid #fff; }
 .heat-0 { background: #f6f7f4; } .heat-1 { background: #dfe9e4; } .heat-2 { background: #c2d8d1; }

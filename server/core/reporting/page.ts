@@ -89,7 +89,8 @@ function summary({ body }: PageContext): string {
   const conditions = document.withinFactors.reduce((count, { levels }) => count * levels.length, 1);
   return (
     `Report on protocol version ${version}: ${countText(conditions, 'condition')} over ` +
-    `${countText(document.periods.count, 'period')}, ${countText(overall.arrived, 'participant')} ` +
-    `at ${countText(bySite.length, 'site')}, of whom ${overall.completed} completed every period.`
+    `${countText(document.periods.count, 'period')}, ` +
+    `${countText(overall.arrived, 'participant')} at ${countText(bySite.length, 'site')}, ` +
+    `of whom ${overall.completed} completed every period.`
   );
 }

@@ -2,8 +2,8 @@ import { type Content, html, type Markup } from './html.ts';
 
 export interface Column {
   readonly heading: string;
-  /** Numbers stand to the right, words to the left. */
-  readonly kind: 'words' | 'number';
+  /** Numbers stand to the right, words to the left; phrases do so without a break. */
+  readonly kind: 'words' | 'number' | 'phrase';
 }
 
 export interface TableInput {

@@ -58,9 +58,11 @@ function intervalFigure({ measure, result }: MeasureOnPage, context: PageContext
   const centre = cellSummary === 'mean-logarithm' ? 'Geometric mean' : 'Mean';
   return rowFigure({
     description: `${centre} of ${measure.label} by condition, with within-participant intervals.`,
-    caption: `${centre} by condition with ${percentText(level)} within-participant intervals (Morey 2008),
-of the ${cellSummaryText(cellSummary)} of each of ${countText(intervals.participants, 'participant')} with every condition. They show
-the pattern of the conditions; they are not intervals of a difference.`,
+    caption:
+      `${centre} by condition with ${percentText(level)} within-participant intervals ` +
+      `(Morey 2008), of the ${cellSummaryText(cellSummary)} of each participant; ` +
+      `${countText(intervals.participants, 'participant')} gave every condition. They show the ` +
+      'pattern of the conditions; they are not intervals of a difference.',
     axisLabel: axisLabel(measure, cellSummary),
     marks: intervals.conditions.map(({ condition, mean, interval }) => ({
       label: context.conditionLabel(condition),
@@ -155,7 +157,7 @@ function cellsOfScale({ ofScale }: Summary, measure: Measure): string[] {
       if (!rate.estimable) return ['–', '–', '–'];
       return [
         numberText(rate.total, measure.decimals),
-        `${Number(rate.exposure.toPrecision(8))}${rate.exposureUnit === null ? ' trials' : ` ${rate.exposureUnit}`}`,
+        `${Number(rate.exposure.toPrecision(8))} ${rate.exposureUnit ?? 'trials'}`,
         numberText(rate.rate, derivedDecimals(measure) + 2),
       ];
     }

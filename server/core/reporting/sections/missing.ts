@@ -5,7 +5,8 @@ import { columns, table } from '../table.ts';
 
 /** Values expected and values there, by measure, condition and period. */
 export function missingSection(context: PageContext): Markup {
-  return html`<p>Expected are the values of everybody who arrived, in every period of the sequence, by the condition
+  return html`<p>Expected are the values of everybody who arrived, in every period of the
+sequence, by the condition
 assigned. Nothing was imputed: missing values are simply not there, which is harmless only as far as
 their absence has nothing to do with what they would have been.</p>
 ${table({

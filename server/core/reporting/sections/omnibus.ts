@@ -19,7 +19,7 @@ import {
   pValuePhrase,
   pValueText,
 } from '../number-text.ts';
-import { cellSummaryText, type PageContext, whyNot } from '../page-context.ts';
+import { cellSummaryText, type PageContext, reasonCell, whyNot } from '../page-context.ts';
 import { columns, table } from '../table.ts';
 
 /** The test over all conditions by the measure's planned method. */
@@ -45,10 +45,12 @@ function leftOutText({ withData, complete, participants }: LeftOut): string {
 
 function anovaPart(result: RepeatedMeasuresAnovaResult, context: PageContext): Markup {
   const { anova, leftOut, summary, conditionAdjustedForPeriod } = result;
-  const beside = html`<p>All conditions equal, adjusted for period (participant + condition + period in one fit,
+  const beside = html`<p>All conditions equal, adjusted for period (participant + condition +
+period in one fit,
 every observation used): ${fTestText(conditionAdjustedForPeriod)}</p>
 `;
-  const intro = html`<p>Repeated-measures analysis of variance of one number a participant and condition, the
+  const intro = html`<p>Repeated-measures analysis of variance of one number a participant and
+condition, the
 ${cellSummaryText(summary)}. ${leftOutText(leftOut)}</p>
 `;
   if (!anova.estimable) {
@@ -75,9 +77,7 @@ ${table({
   ),
   rows: anova.effects.map((effect): Content[] => [
     name(effect),
-    ...(effect.estimable
-      ? effectCells(effect)
-      : [html`<code>${effect.reason}</code>`, ...Array(9).fill('–')]),
+    ...(effect.estimable ? effectCells(effect) : [reasonCell(effect), ...Array(9).fill('–')]),
   ]),
 })}
 ${anova.effects.flatMap((effect) =>
@@ -121,7 +121,7 @@ function effectCells(test: AnovaTest): string[] {
 function mauchlyCells(
   mauchly: Extract<AnovaTest['sphericity'], { applicable: true }>['mauchly'],
 ): Content[] {
-  if (!mauchly.estimable) return [html`<code>${mauchly.reason}</code>`, '–', '–', '–'];
+  if (!mauchly.estimable) return [reasonCell(mauchly), '–', '–', '–'];
   const { w, chiSquare, degreesOfFreedom, pValue } = mauchly;
   return [
     numberText(w, 3),
@@ -131,24 +131,36 @@ function mauchlyCells(
   ];
 }
 
+/** `F(3, 24) = 22.36, p < 0.001` */
+function fText(
+  test: Pick<FTest, 'degreesOfFreedom' | 'errorDegreesOfFreedom' | 'fStatistic' | 'pValue'>,
+): string {
+  const numerator = degreesOfFreedomText(test.degreesOfFreedom);
+  const denominator = degreesOfFreedomText(test.errorDegreesOfFreedom);
+  const statistic = numberText(test.fStatistic, 2);
+  return `F(${numerator}, ${denominator}) = ${statistic}, ${pValuePhrase(test.pValue)}`;
+}
+
 /** An F test in running text. */
 export function fTestText(test: Estimable<FTest>): Markup {
   if (!test.estimable) return html`not estimable: ${test.detail} <code>${test.reason}</code>`;
   const { degreesOfFreedom, errorDegreesOfFreedom, fStatistic, pValue, partialEtaSquared } = test;
-  return html`F(${degreesOfFreedomText(degreesOfFreedom)}, ${degreesOfFreedomText(errorDegreesOfFreedom)}) = ${numberText(fStatistic, 2)}, ${pValuePhrase(pValue)}, partial η² = ${numberText(partialEtaSquared, 3)}.`;
+  return html`${fText({ degreesOfFreedom, errorDegreesOfFreedom, fStatistic, pValue })},
+partial η² = ${numberText(partialEtaSquared, 3)}.`;
 }
 
 function friedmanPart({ friedman, leftOut, summary }: FriedmanResult): Markup {
-  const intro = html`<p>Friedman’s test ranks the conditions within each participant, by the ${cellSummaryText(summary)}.
+  const intro = html`<p>Friedman’s test ranks the conditions within each participant, by the
+${cellSummaryText(summary)}.
 ${leftOutText(leftOut)} It knows no period and no between factor.</p>
 `;
   if (!friedman.estimable) return html`${intro}${whyNot(friedman, 'Friedman’s test')}`;
   const { chiSquare, degreesOfFreedom, pValue, kendallsW, imanDavenport } = friedman;
-  return html`${intro}<p>Chi-square(${degreesOfFreedomText(degreesOfFreedom)}) = ${numberText(chiSquare, 2)},
-${pValuePhrase(pValue)}; Kendall’s W = ${numberText(kendallsW, 3)} over ${countText(friedman.participants, 'participant')}${
-    imanDavenport.estimable
-      ? html`; as F (Iman and Davenport) F(${degreesOfFreedomText(imanDavenport.degreesOfFreedom)}, ${degreesOfFreedomText(imanDavenport.errorDegreesOfFreedom)}) = ${numberText(imanDavenport.fStatistic, 2)}, ${pValuePhrase(imanDavenport.pValue)}`
-      : null
-  }.</p>
+  return html`${intro}<p>Chi-square(${degreesOfFreedomText(degreesOfFreedom)})
+= ${numberText(chiSquare, 2)},
+${pValuePhrase(pValue)}; Kendall’s W = ${numberText(kendallsW, 3)} over
+${countText(friedman.participants, 'participant')}${
+  imanDavenport.estimable ? html`; as an F (Iman and Davenport), ${fText(imanDavenport)}` : null
+}.</p>
 `;
 }

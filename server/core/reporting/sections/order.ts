@@ -1,14 +1,25 @@
 import type { OrderFit } from '../../analysis/result-types.ts';
+import type { ConfidenceInterval } from '../../estimability.ts';
 import type { Measure } from '../../protocol/protocol.ts';
+import { RATIO_DECIMALS } from '../comparison-text.ts';
 import { columnFigure } from '../figures.ts';
 import { html, type Markup } from '../html.ts';
-import { countText, intervalText, numberText, pValuePhrase, signedText } from '../number-text.ts';
+import {
+  countText,
+  intervalText,
+  numberText,
+  percentText,
+  pValuePhrase,
+  signedIntervalText,
+  signedText,
+} from '../number-text.ts';
 import {
   cellSummaryText,
   derivedDecimals,
   labelWithUnit,
   type MeasureOnPage,
   type PageContext,
+  reasonCell,
   standingTag,
   whyNot,
 } from '../page-context.ts';
@@ -17,8 +28,10 @@ import { fTestText } from './omnibus.ts';
 
 /** What order did to every measure. */
 export function orderSection(context: PageContext): Markup {
-  return html`<p>Effects of period, adjusted for condition, from one least-squares fit of participant, condition
-and period. They are always estimated and shown; whether they are significant switches nothing. Effects
+  return html`<p>Effects of period, adjusted for condition, from one least-squares fit of
+participant, condition
+and period. They are always estimated and shown; whether they are significant switches nothing.
+Effects
 of the previous condition (carryover) are not estimated here.</p>
 ${context.measures.map((entry) => measurePart(entry, context))}`;
 }
@@ -33,17 +46,14 @@ ${countsTable({ measure, result }, context)}
 ${
   order.fit.estimable
     ? fitPart(order.fit, measure, order.summary === 'mean-logarithm', {
-        lead: `Response: the ${cellSummaryText(order.summary)} of a participant in a period.${approximation}`,
+        lead: `Response: the ${cellSummaryText(order.summary)} in a period.${approximation}`,
         level: descriptives.withinParticipantIntervals.level,
       })
     : whyNot(order.fit, 'The effect of order')
 }`;
 }
 
-function countsTable(
-  { measure, result }: MeasureOnPage,
-  { body, conditionLabel }: PageContext,
-): Markup {
+function countsTable({ measure, result }: MeasureOnPage, { conditionLabel }: PageContext): Markup {
   const { conditions, periods } = result.descriptives.byConditionAndPeriod.reduce(
     (found, { condition, period }) => ({
       conditions: found.conditions.add(condition),
@@ -53,7 +63,7 @@ function countsTable(
   );
   const cells = result.descriptives.byConditionAndPeriod;
   return heatTable({
-    caption: `${measure.label}: participants with a value, by condition and period (of ${body.protocol.document.periods.count} periods)`,
+    caption: `${measure.label}: participants with a value, by condition and period`,
     corner: 'Condition',
     columnHeads: [...periods].map((period) => `Period ${period}`),
     rows: [...conditions].map((condition) => ({
@@ -91,7 +101,10 @@ ${
     ? null
     : columnFigure({
         description: `Adjusted ${word} of ${measure.label} by period, with intervals.`,
-        caption: `Adjusted ${word} by period with ${Math.round(100 * text.level * 10) / 10} % intervals, conditions weighted equally; ${countText(fit.participants, 'participant')}, ${countText(fit.observations, 'observation')}.`,
+        caption:
+          `Adjusted ${word} by period with ${percentText(text.level)} intervals, conditions ` +
+          `weighted equally; ${countText(fit.participants, 'participant')}, ` +
+          `${countText(fit.observations, 'observation')}.`,
         axisLabel: labelWithUnit(measure),
         marks,
       })
@@ -104,9 +117,9 @@ ${table({
       ? [
           entry.period,
           numberText(back(entry.mean), decimals),
-          `${numberText(back(entry.interval.lower), decimals)} to ${numberText(back(entry.interval.upper), decimals)}`,
+          intervalText(intervalBack(entry.interval, back), decimals),
         ]
-      : [entry.period, '–', html`<code>${entry.reason}</code>`],
+      : [entry.period, '–', reasonCell(entry)],
   ),
 })}
 <p>All periods equal: ${fTestText(fit.periodTest)}</p>
@@ -114,22 +127,33 @@ ${trendPart(fit, measure, isLogarithm)}
 ${
   stray.length === 0
     ? null
-    : html`<p class="note">The data cannot tell these effects from the others: ${stray.join(', ')}.</p>`
+    : html`<p class="note">The data cannot tell these effects from the others:
+${stray.join(', ')}.</p>`
 }`;
+}
+
+function intervalBack(
+  { level, lower, upper }: ConfidenceInterval,
+  back: (value: number) => number,
+): ConfidenceInterval {
+  return { level, lower: back(lower), upper: back(upper) };
 }
 
 function trendPart({ linearTrend }: OrderFit, measure: Measure, isLogarithm: boolean): Markup {
   if (!linearTrend.estimable) return whyNot(linearTrend, 'The linear trend over periods');
   const { estimate, interval, pValue } = linearTrend;
   if (isLogarithm) {
-    const ends = { ...interval, lower: Math.exp(interval.lower), upper: Math.exp(interval.upper) };
-    return html`<p>Linear trend: from each period to the next, ${measure.label} changed by a factor of
-${numberText(Math.exp(estimate), 3)} (interval ${intervalText(ends, 3)}; ${pValuePhrase(pValue)}).</p>
+    const ends = intervalText(intervalBack(interval, Math.exp), RATIO_DECIMALS);
+    const factor = numberText(Math.exp(estimate), RATIO_DECIMALS);
+    return html`<p>Linear trend: from each period to the next, ${measure.label} changed by a
+factor of
+${factor} (interval ${ends}; ${pValuePhrase(pValue)}).</p>
 `;
   }
   const decimals = derivedDecimals(measure) + 1;
   const unit = measure.unit === null ? '' : ` ${measure.unit}`;
   return html`<p>Linear trend: from each period to the next, ${measure.label} changed by
-${signedText(estimate, decimals)}${unit} (interval ${signedText(interval.lower, decimals)} to ${signedText(interval.upper, decimals)}; ${pValuePhrase(pValue)}).</p>
+${signedText(estimate, decimals)}${unit} (interval ${signedIntervalText(interval, decimals)};
+${pValuePhrase(pValue)}).</p>
 `;
 }

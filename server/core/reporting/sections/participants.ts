@@ -10,7 +10,7 @@ const FLOW_ROWS: readonly (readonly [string, (counts: FlowCounts) => number])[] 
   ['Completed every period', ({ completed }) => completed],
   ['Under way at freezing', ({ underWay }) => underWay],
   ['Withdrawn', ({ withdrawn }) => withdrawn],
-  ['  of these, replaced', ({ replaced }) => replaced],
+  ['Withdrawn and replaced', ({ replaced }) => replaced],
   ['Excluded by a registered rule', ({ excluded }) => excluded],
   ['Erased before freezing', ({ erased }) => erased],
   ['Check-ins voided as mistakes (not among the arrived)', ({ voided }) => voided],
@@ -21,10 +21,11 @@ export function participantsSection(context: PageContext): Markup {
   const { overall, bySite, byProtocolVersion, outsideProtocol } =
     context.body.result.participantFlow;
   const versions = byProtocolVersion.map(
-    ({ version, arrived }) => `version ${version}: ${countText(arrived, 'participant')}`,
+    ({ version, arrived }) =>
+      `under protocol version ${version}: ${countText(arrived, 'participant')}`,
   );
-  return html`<p>${countText(overall.arrived, 'participant')} arrived at ${countText(bySite.length, 'site')}
-(by protocol, ${versions.length === 0 ? 'none' : versions.join(', ')}).</p>
+  return html`<p>${countText(overall.arrived, 'participant')} arrived at
+${countText(bySite.length, 'site')} (${versions.length === 0 ? 'none' : versions.join(', ')}).</p>
 ${table({
   caption: 'Participant flow by site',
   columns: columns([''], [...bySite.map(({ label }) => label), 'All sites']),
@@ -69,6 +70,10 @@ function planned({ body }: PageContext): number {
   return body.snapshot.sites.reduce((sum, { targetEnrolment }) => sum + targetEnrolment, 0);
 }
 
+function identifiers(ids: readonly string[]): Markup[] {
+  return ids.map((id, index) => html`${index === 0 ? '' : ', '}<code>${id}</code>`);
+}
+
 /** What the registered rules left out. */
 export function exclusionsSection(context: PageContext): Markup {
   const { rules, values, participants } = context.body.result.exclusions;
@@ -76,9 +81,11 @@ export function exclusionsSection(context: PageContext): Markup {
     return html`<p>The protocol registers no exclusion rule, and nothing was left out.</p>`;
   }
   const named = rules.flatMap(({ excludedParticipants }) => excludedParticipants);
-  return html`<p>The registered rules were applied in their order, before anything was estimated. They left
-out ${countText(values, 'value')}; ${countText(participants, 'participant was', 'participants were')}
-left out entirely. Nothing else was left out.</p>
+  return html`<p>The registered rules were applied in their order, before anything was estimated.
+They left
+out ${countText(values, 'value')};
+${countText(participants, 'participant was', 'participants were')} left out entirely. Nothing
+else was left out.</p>
 ${table({
   caption: 'Left out by rule',
   columns: columns(['Rule', 'By measure', 'By site'], ['Values', 'Participants']),
@@ -97,7 +104,8 @@ ${table({
 ${
   named.length === 0
     ? null
-    : html`<p class="note">Participants left out, by identifier: ${named.map((id, index) => html`${index === 0 ? '' : ', '}<code>${id}</code>`)}. The values left out
+    : html`<p class="note">Participants left out, by identifier: ${identifiers(named)}. The
+values left out
 are listed by participant, period and repetition in the report’s JSON.</p>`
 }`;
 }

@@ -1,7 +1,7 @@
-import type { ExclusionRule, MeasurePlan, Protocol } from '../../protocol/protocol.ts';
+import type { ExclusionRule, Measure, MeasurePlan, Protocol } from '../../protocol/protocol.ts';
 import { html, type Markup } from '../html.ts';
-import { percentText } from '../number-text.ts';
-import { labelWithUnit, type PageContext } from '../page-context.ts';
+import { countText, percentText } from '../number-text.ts';
+import { ESTIMATES, labelWithUnit, type PageContext } from '../page-context.ts';
 import { columns, table } from '../table.ts';
 
 /** What was fixed before the data: the protocol and its hash. */
@@ -14,16 +14,28 @@ so that any later change to it would show.</p>
 <dt>Version</dt><dd>${protocol.version}</dd>
 <dt>SHA-256 of the protocol</dt><dd><code>${protocol.sha256}</code></dd>
 <dt>Rationale</dt><dd>${document.rationale}</dd>
-<dt>Scheme</dt><dd>${SCHEMES[document.scheme.kind]}, ${document.periods.count} periods of ${document.periods.repetitions} each</dd>
-<dt>Hand-out</dt><dd>${document.policy.kind}; a vacated slot goes to ${document.replacement.kind === 'none' ? 'nobody' : 'the next arrival of the same site and stratum'}</dd>
+<dt>Scheme</dt><dd>${SCHEMES[document.scheme.kind]}</dd>
+<dt>Periods</dt><dd>${document.periods.count}, of
+${countText(document.periods.repetitions, 'trial')} each</dd>
+<dt>Hand-out</dt><dd>${document.policy.kind}; ${REPLACEMENTS[document.replacement.kind]}</dd>
 </dl>
 <h3>Hypotheses</h3>
-${document.hypotheses.length === 0 ? html`<p class="none">None registered.</p>` : html`<ul>${document.hypotheses.map(({ statement }) => html`<li>${statement}</li>`)}</ul>`}
+${hypotheses(document)}
 <h3>Factors, measures and plan</h3>
 ${factorTable(document)}
 ${planTable(context)}
 `;
 }
+
+function hypotheses({ hypotheses: registered }: Protocol): Markup {
+  if (registered.length === 0) return html`<p class="none">None registered.</p>`;
+  return html`<ul>${registered.map(({ statement }) => html`<li>${statement}</li>\n`)}</ul>`;
+}
+
+const REPLACEMENTS: { readonly [Kind in Protocol['replacement']['kind']]: string } = {
+  'same-site': 'a vacated slot goes to the next arrival of the same site and stratum',
+  none: 'a vacated slot goes to nobody',
+};
 
 const SCHEMES: { readonly [Kind in Protocol['scheme']['kind']]: string } = {
   'complete-permutations': 'complete permutations',
@@ -67,26 +79,32 @@ function planTable(context: PageContext): Markup {
       DIRECTIONS[measure.direction],
       ...(plan === null
         ? ['no plan (exposure of another measure)', '–', '–', '–', '–']
-        : planCells(plan, context)),
+        : planCells(plan, measure, context)),
     ]),
   });
 }
 
-function planCells(plan: MeasurePlan, context: PageContext): string[] {
+function planCells(plan: MeasurePlan, measure: Measure, context: PageContext): string[] {
   const { contrasts, multiplicity, equivalence } = plan;
+  const unit = measure.scale === 'time-like' || measure.unit === null ? '' : ` ${measure.unit}`;
   const pairs =
     contrasts.kind === 'all-pairs'
       ? 'all pairs'
       : `each against ${context.conditionLabel(contrasts.reference)}`;
   const margins =
-    equivalence === null ? '' : `; equivalence within ${equivalence.lower} to ${equivalence.upper}`;
+    equivalence === null ? '' : `; equivalence within ${marginsText(equivalence)}${unit}`;
   return [
     plan.role,
     METHOD_NAMES[plan.method],
-    plan.primaryEstimate === 'unadjusted' ? 'not adjusted for period' : 'adjusted for period',
+    ESTIMATES[plan.primaryEstimate],
     `${pairs}, p-values ${ADJUSTMENTS[multiplicity]}${margins}`,
     percentText(plan.alpha),
   ];
+}
+
+/** Margins as the protocol has them, with a true minus sign. */
+export function marginsText(margins: { readonly lower: number; readonly upper: number }): string {
+  return `${margins.lower} to ${margins.upper}`.replaceAll('-', '−');
 }
 
 /** Names of methods in running text. */
