@@ -207,7 +207,7 @@ CREATE TABLE participant_periods (
   started_at timestamptz(3),
   station_id uuid,
   operator text,
-  deviations text[],
+  deviations text[] NOT NULL,
   completed_at timestamptz(3),
   CONSTRAINT participant_periods_pkey PRIMARY KEY (participant_id, period)
 );
@@ -250,7 +250,7 @@ CREATE TABLE trials (
   current boolean NOT NULL,
   condition text NOT NULL,
   deviation boolean NOT NULL,
-  flags text[],
+  flags text[] NOT NULL,
   commitment text NOT NULL,
   upload_id uuid,
   received_at timestamptz(3) NOT NULL,
