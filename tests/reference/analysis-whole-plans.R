@@ -40,7 +40,7 @@ sphericity <- function(data) {
        p = unname(s$univariate.tests["condition", "Pr(>F)"]),
        ges = anova(a)["condition", "ges"],
        mauchly = unname(s$sphericity.tests[1, "Test statistic"]),
-       mauchlyP = unname(s$sphericity.tests[1, "p-value"]),
+
        gg = unname(s$pval.adjustments[1, "GG eps"]), ggP = unname(s$pval.adjustments[1, "Pr(>F[GG])"]),
        hf = unname(s$pval.adjustments[1, "HF eps"]), hfP = unname(s$pval.adjustments[1, "Pr(>F[HF])"]))
 }
