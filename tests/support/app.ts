@@ -26,6 +26,8 @@ export interface TestService {
   readonly administrator: string;
   /** Requests with this token; null sends none. */
   as(token: string | null, operator?: string): Caller;
+  /** Another instance of the app on the same database, listening; gives its base URL. */
+  startInstance(): Promise<string>;
   close(): Promise<void>;
 }
 
@@ -45,6 +47,7 @@ export async function startTestService(
   await app.ready();
   const first = await ensureFirstAdministrator(database);
   if (first === null) throw new Error('The cloned database has an administrator already.');
+  const closers = [() => cloned.drop(), () => database.close(), () => app.close()];
   return {
     app,
     config,
@@ -53,15 +56,23 @@ export async function startTestService(
     logger,
     administrator: first.token,
     as: (token, operator) => callerOf(app, token, operator),
+    startInstance: async () => {
+      const own = openDatabase({ url: cloned.url, poolSize: 8 });
+      const instance = await buildApp({ config, database: own, logger });
+      closers.push(
+        () => own.close(),
+        () => instance.close(),
+      );
+      return await instance.listen({ host: '127.0.0.1', port: 0 });
+    },
     close: async () => {
-      await app.close();
-      await database.close();
-      await cloned.drop();
+      for (const close of closers.reverse()) await close();
     },
   };
 }
 
-function callerOf(app: FastifyInstance, token: string | null, operator?: string): Caller {
+/** Requests to this app with this token; null sends none. */
+export function callerOf(app: FastifyInstance, token: string | null, operator?: string): Caller {
   const common = {
     ...(token === null ? {} : { authorization: `Bearer ${token}` }),
     ...(operator === undefined ? {} : { 'operator-code': operator }),
