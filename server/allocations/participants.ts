@@ -248,6 +248,8 @@ export interface KnownParticipant {
   readonly arrivedAt: Date;
   /** Set for those who withdrew; a voided check-in has no code any more, nor has an erased one. */
   readonly withdrawnAt: Date | null;
+  /** The last period that somebody who withdrew had begun. */
+  readonly periodReached: number | null;
 }
 
 /**
@@ -276,9 +278,23 @@ export async function findParticipants(
       sequence: await sequenceKeys(tx, studyId, row),
       arrivedAt,
       withdrawnAt: endedAt,
+      periodReached: row.periodReached,
     });
   }
   return known;
+}
+
+/** Codes of a study's participants by id; a voided or erased participant has none. */
+export async function participantCodes(
+  tx: SqlTransaction,
+  studyId: string,
+): Promise<Map<string, string>> {
+  const filter = { studyId, siteId: null, after: null, limit: null };
+  const codes = new Map<string, string>();
+  for (const { id, code } of await store.selectParticipants(tx, filter)) {
+    if (code !== null) codes.set(id, code);
+  }
+  return codes;
 }
 
 /**

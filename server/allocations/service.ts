@@ -17,6 +17,7 @@ export {
   markPeriodsBegun,
   markPeriodsCompleted,
   type ParticipantRecord,
+  participantCodes,
   participantRecords,
   requireParticipant,
 } from './participants.ts';

@@ -220,7 +220,7 @@ CREATE TABLE uploads (
   operator text,
   acceptance text NOT NULL,
   media_type text NOT NULL,
-  sha256 text NOT NULL,
+  sha256 text,
   rows integer NOT NULL,
   accepted integer NOT NULL,
   repeated integer NOT NULL,
@@ -235,7 +235,8 @@ CREATE TABLE refused_rows (
   upload_id uuid NOT NULL,
   row integer NOT NULL,
   participant_id uuid,
-  raw text NOT NULL,
+  code_key text,
+  raw text,
   faults text NOT NULL,
   CONSTRAINT refused_rows_pkey PRIMARY KEY (upload_id, row)
 );
@@ -335,7 +336,9 @@ CREATE UNIQUE INDEX slots_study_id_issue_number_key ON slots (study_id, issue_nu
 CREATE INDEX participants_study_id_site_id_idx ON participants (study_id, site_id);
 CREATE UNIQUE INDEX participant_codes_study_id_code_key_key ON participant_codes (study_id, code_key);
 CREATE INDEX occupancies_slot_id_idx ON occupancies (slot_id);
+CREATE INDEX uploads_study_id_idx ON uploads (study_id);
 CREATE INDEX refused_rows_participant_id_idx ON refused_rows (participant_id);
+CREATE INDEX refused_rows_code_key_idx ON refused_rows (code_key);
 CREATE UNIQUE INDEX trials_participant_id_period_repetition_version_key ON trials (participant_id, period, repetition, version);
 CREATE INDEX trials_study_id_idx ON trials (study_id);
 CREATE UNIQUE INDEX trial_contents_study_id_record_id_version_key ON trial_contents (study_id, record_id, version);

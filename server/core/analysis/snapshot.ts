@@ -86,7 +86,7 @@ export interface SnapshotTrial {
   readonly condition: string;
   /** True when the condition presented differs from the one assigned. */
   readonly deviation: boolean;
-  /** `implausible:<measure>` and the like, set when the record came in. */
+  /** `out-of-range:<measure>` and the like, set when the record came in. */
   readonly flags: readonly string[];
   /** By measure key; null where missing. */
   readonly values: { readonly [measure: string]: number | boolean | null };

@@ -21,6 +21,12 @@ export const RESERVED_MEASURE_KEYS: ReadonlySet<string> = new Set([
   'started',
   'ended',
   'missing',
+  'note',
+  'deviation',
+  'flags',
+  'version',
+  'current',
+  'erased',
 ]);
 
 const DECIMALS_MAX = 10;
