@@ -10,6 +10,7 @@ import type { Protocol } from '#core/protocol/protocol.ts';
 import { reportPage } from '#core/reporting/page.ts';
 import { canonicalReportBody, reportBody } from '#core/reporting/report-body.ts';
 import { engineVersion } from './engine.ts';
+import { type Fault, faultOf } from './fault.ts';
 
 /**
  * What a report is a function of, together with the engine's version. The long parts are the texts
@@ -35,18 +36,12 @@ export interface ComputedReport {
   readonly engineVersion: string;
 }
 
-/** Where the computation broke: no message, since it may quote a measured value. */
-export interface ComputationFault {
-  readonly name: string;
-  readonly frames: readonly string[];
-}
-
 export type ComputationOutcome =
   | { readonly kind: 'computed'; readonly report: ComputedReport }
   | { readonly kind: 'stopped' }
   | { readonly kind: 'erased'; readonly participants: number }
   | { readonly kind: 'altered'; readonly what: 'protocol' | 'snapshot' }
-  | { readonly kind: 'fault'; readonly fault: ComputationFault };
+  | { readonly kind: 'fault'; readonly fault: Fault };
 
 export interface ComputationHooks {
   /** @param fraction from 0 to 1 */
@@ -99,10 +94,4 @@ export function compute(input: ComputationInput, hooks: ComputationHooks): Compu
     if (error instanceof AnalysisStopped) return { kind: 'stopped' };
     return { kind: 'fault', fault: faultOf(error) };
   }
-}
-
-function faultOf(error: unknown): ComputationFault {
-  if (!(error instanceof Error)) return { name: typeof error, frames: [] };
-  const frames = (error.stack ?? '').split('\n').filter((line) => /^\s+at /.test(line));
-  return { name: error.name, frames: frames.map((line) => line.trim()) };
 }

@@ -7,9 +7,10 @@ import {
   splitSnapshot,
 } from '#core/analysis/snapshot.ts';
 import { canonicalJson, jsonValueOf } from '#core/hashing/canonical-json.ts';
+import { SERVICE_ACTOR } from '#platform/call.ts';
 import { type Database, type SqlTransaction, sqlExecutor } from '#platform/database.ts';
 import { uuidv7 } from '#platform/ids.ts';
-import { countLooks, recordLook } from '#server/audit/log.ts';
+import { appendEntry, countLooks, recordLook } from '#server/audit/log.ts';
 import { type Reading, readStudy } from './read-study.ts';
 import { requesterOf } from './requester.ts';
 import * as store from './store.ts';
@@ -21,6 +22,9 @@ const READINGS_MAX = 5;
 /** Bytes of the salt of each commitment. */
 const SALT_BYTES = 16;
 
+/** What storing a reading came to. */
+type Stored = { readonly snapshotId: string } | 'stale' | 'cancelled';
+
 /**
  * Freezes the data of a study for an analysis; a second call for the same analysis gives what the
  * first one froze. Audit `looked` and `snapshot-frozen`.
@@ -30,37 +34,41 @@ const SALT_BYTES = 16;
  * have been erased in between, nothing is stored and the reading starts again; an erasure that
  * comes later finds what was stored here (see `forgetSnapshotParticipant`).
  *
- * @returns the snapshot's id
+ * @returns the snapshot's id; null when the analysis was cancelled, which is then not a look
  */
 export async function freezeSnapshot(
   database: Database,
   analysis: store.TakenAnalysis,
-): Promise<string> {
+): Promise<string | null> {
   for (let reading = 1; reading <= READINGS_MAX; reading += 1) {
     const study = await database.inSqlTransaction(async (tx) => {
       await tx`set transaction isolation level repeatable read, read only`;
       return await readStudy(tx, database.records, analysis);
     });
     const { body, contents } = splitSnapshot(study.snapshot, () => randomBytes(SALT_BYTES));
-    const id = await database.inSqlTransaction((tx) =>
+    const stored = await database.inSqlTransaction((tx) =>
       storeSnapshot(tx, analysis, { study, body, contents }),
     );
-    if (id !== null) return id;
+    if (stored === 'cancelled') return null;
+    if (stored !== 'stale') return stored.snapshotId;
   }
   throw new Error(`Participants were erased during each of ${READINGS_MAX} readings.`);
 }
 
-/** Null when what was read is no longer what may be kept. */
+/** `stale` when somebody whose data were read has been erased. */
 async function storeSnapshot(
   tx: SqlTransaction,
   analysis: store.TakenAnalysis,
   read: { study: Reading; body: SnapshotBody; contents: readonly StoredContent[] },
-): Promise<string | null> {
+): Promise<Stored> {
   const withContent = read.contents.map(({ content }) => content.participantId);
-  if ((await snapshotStore.lockKeptParticipants(tx, withContent)) < withContent.length) return null;
+  if ((await snapshotStore.lockKeptParticipants(tx, withContent)) < withContent.length) {
+    return 'stale';
+  }
   const now = await store.lockAnalysis(tx, analysis.id);
   if (now === null) throw new Error(`The analysis ${analysis.id} is gone.`);
-  if (now.snapshotId !== null) return now.snapshotId;
+  if (now.cancelRequested) return 'cancelled';
+  if (now.snapshotId !== null) return { snapshotId: now.snapshotId };
 
   const { studyId } = analysis;
   const at = new Date();
@@ -76,13 +84,9 @@ async function storeSnapshot(
     at,
   });
   const body: SnapshotBody = { ...read.body, looks: await countLooks(executor, studyId) };
-  await snapshotStore.insertSnapshot(tx, {
-    id,
-    studyId,
-    sha256: snapshotSha256(body),
-    body: canonicalSnapshotBody(body),
-    createdAt: at,
-  });
+  const sha256 = snapshotSha256(body);
+  const text = canonicalSnapshotBody(body);
+  await snapshotStore.insertSnapshot(tx, { id, studyId, sha256, body: text, createdAt: at });
   await snapshotStore.insertSnapshotParticipants(
     tx,
     read.contents.map(({ salt, content }) => ({
@@ -93,5 +97,13 @@ async function storeSnapshot(
     })),
   );
   await store.updateSnapshot(tx, analysis.id, id);
-  return id;
+  await appendEntry(executor, {
+    chain: studyId,
+    actor: SERVICE_ACTOR,
+    action: 'snapshot-frozen',
+    subject: id,
+    details: { analysisId: analysis.id, sha256 },
+    at,
+  });
+  return { snapshotId: id };
 }

@@ -4,8 +4,9 @@ import { type Database, type SqlTransaction, sqlExecutor } from '#platform/datab
 import type { TakenJob } from '#platform/queue.ts';
 import { appendEntry } from '#server/audit/log.ts';
 import { lockStudy } from '#server/studies/service.ts';
-import type { ComputationFault, ComputationInput, ComputedReport } from './computation.ts';
+import type { ComputationInput, ComputedReport } from './computation.ts';
 import { computeInThread } from './compute-in-thread.ts';
+import { type Fault, faultOf } from './fault.ts';
 import { freezeSnapshot } from './freeze-snapshot.ts';
 import { requesterOf } from './requester.ts';
 import { loadComputationInput } from './snapshots.ts';
@@ -62,7 +63,14 @@ export function createAnalysisRunner(options: RunnerOptions): AnalysisRunner {
         logger.info({ analysis: job.subjectId }, 'nothing left to do for this analysis');
         return;
       }
-      await runTaken(options, taken, job.signal);
+      try {
+        await runTaken(options, taken, job.signal);
+      } catch (error) {
+        const fault = faultOf(error);
+        logger.error({ analysis: taken.id, triesBefore: job.triesBefore, ...fault }, 'a try broke');
+        // The queue keeps what is thrown in a table, where nobody would erase a quoted value.
+        throw new Error(`The try ended with ${fault.name} ${fault.code ?? ''}`.trimEnd());
+      }
     },
 
     giveUp: async (job) => {
@@ -94,6 +102,7 @@ async function runTaken(options: RunnerOptions, taken: Taken, signal: AbortSigna
     database.inSqlTransaction((tx) => store.updateProgress(tx, taken.id, progress));
   await tell();
   const snapshotId = taken.snapshotId ?? (await freezeSnapshot(database, taken));
+  if (snapshotId === null) return await end(database, taken.id, 'cancelled', null);
   const input = await loadComputationInput(database, { ...taken, snapshotId });
 
   progress.fraction = FROZEN;
@@ -201,7 +210,7 @@ function alteredMeanwhile(what: string): string {
 }
 
 /** Says what broke without the fault's own message, which may quote a measured value. */
-function computationFailure(fault: ComputationFault): string {
+function computationFailure(fault: Fault): string {
   return (
     `The computation broke with a ${fault.name}. That is a fault of the service; ` +
     'its log names the place under the id of this analysis.'

@@ -8,6 +8,7 @@ export interface AnalysedStudy {
   readonly labId: string;
   readonly siteId: string;
   readonly lead: Caller;
+  readonly leadToken: string;
   readonly analyst: Caller;
   readonly auditor: Caller;
   readonly station: Caller;
@@ -94,7 +95,7 @@ export async function registerStudy(service: TestService): Promise<AnalysedStudy
   const otherLab = await made('/v1/labs', { name: `Ridge ${suffix}` });
   const site = await made(`/v1/labs/${lab.id}/sites`, { name: 'Quay' });
   const station = await made(`/v1/sites/${site.id}/stations`, { name: 'Bench 1' });
-  const person = async (role: string, labId: string): Promise<Caller> => {
+  const person = async (role: string, labId: string): Promise<string> => {
     const account = await made('/v1/accounts', { name: `${role} ${suffix}`, labId });
     const token = await made('/v1/tokens', {
       role,
@@ -103,7 +104,7 @@ export async function registerStudy(service: TestService): Promise<AnalysedStudy
       label: role,
       lifetimeSeconds: 3600,
     });
-    return service.as(token.token ?? '');
+    return token.token ?? '';
   };
   const stationToken = await made('/v1/tokens', {
     role: 'station',
@@ -111,17 +112,19 @@ export async function registerStudy(service: TestService): Promise<AnalysedStudy
     label: 'bench',
     lifetimeSeconds: 3600,
   });
-  const lead = await person('study-lead', lab.id);
+  const leadToken = await person('study-lead', lab.id);
+  const lead = service.as(leadToken);
   const studyId = await registered(lead, site.id, `Liners ${suffix}`);
   return {
     studyId,
     labId: lab.id,
     siteId: site.id,
     lead,
-    analyst: await person('analyst', lab.id),
-    auditor: await person('auditor', lab.id),
+    leadToken,
+    analyst: service.as(await person('analyst', lab.id)),
+    auditor: service.as(await person('auditor', lab.id)),
     station: service.as(stationToken.token ?? '', 'OP-1'),
-    stranger: await person('study-lead', otherLab.id),
+    stranger: service.as(await person('study-lead', otherLab.id)),
   };
 }
 
