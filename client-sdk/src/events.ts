@@ -7,13 +7,17 @@ export interface ServerSentEvent {
 /**
  * Reads a stream of server-sent events. Source: WHATWG HTML, "Server-sent events", interpreting an
  * event stream; ids and retry times are not used here.
+ *
+ * @param onLine called for every line, comments included: a sign of life
  */
 export async function* eventsIn(
   body: ReadableStream<Uint8Array>,
+  onLine: () => void = () => undefined,
 ): AsyncGenerator<ServerSentEvent, void, undefined> {
   let event = '';
   let data: string[] = [];
   for await (const line of linesIn(body)) {
+    onLine();
     if (line === '') {
       if (data.length > 0) yield { event: event === '' ? 'message' : event, data: data.join('\n') };
       event = '';

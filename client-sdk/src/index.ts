@@ -1,3 +1,4 @@
+export { Analysis, AnalysisEndedError, type WaitOptions } from './analysis.ts';
 export { Audit } from './audit.ts';
 export { Connection, type FairturnOptions, type PlainRequest } from './connection.ts';
 export { Fairturn } from './fairturn.ts';
@@ -26,5 +27,15 @@ export {
   type ProblemType,
   UnreadableAnswerError,
 } from './problems.ts';
+export { Report } from './report.ts';
 export { DEFAULT_RETRY, type RetryPolicy } from './retry.ts';
 export type * from './schemas.ts';
+export {
+  type BookedDuePeriod,
+  type Delivery,
+  NotInBookError,
+  StationBook,
+  type StationBookOptions,
+} from './station-book.ts';
+export { Studies } from './studies.ts';
+export { Study } from './study.ts';

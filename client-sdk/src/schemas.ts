@@ -11,8 +11,55 @@ export type Token = Schemas['Token'];
 export type CreatedToken = Schemas['CreatedToken'];
 /** One shape a role, so that a place that does not fit a role cannot be written. */
 export type NewToken = Schemas['CreateTokenBody'];
+
+export type StudyDetails = Schemas['Study'];
+/** The protocol as a document: what is drafted, checked and registered. */
+export type ProtocolDocument = Schemas['ProtocolDocument'];
+export type ProtocolDraft = Schemas['ProtocolDraft'];
+export type ProtocolDraftRevision = Schemas['ProtocolDraftRevision'];
+export type ProtocolDraftCheck = Schemas['ProtocolDraftCheck'];
+export type ProtocolVersion = Schemas['ProtocolVersion'];
+export type ProtocolVersionSummary = Schemas['ProtocolVersionSummary'];
+export type SchemePreview = Schemas['SchemePreview'];
+export type SchemePreviewRequest = Schemas['SchemePreviewBody'];
+export type AllocationSecret = Schemas['AllocationSecret'];
+export type Condition = Schemas['Condition'];
+export type Washout = Schemas['Washout'];
+
+/** Somebody new, with a code or without one, or somebody who returns. */
+export type ArrivalRequest = Schemas['ArrivalBody'];
+export type Arrival = Schemas['Arrival'];
+export type DuePeriod = Schemas['DuePeriod'];
+export type PeriodStartRequest = Schemas['PeriodStartBody'];
+export type PeriodStart = Schemas['PeriodStart'];
+export type WithdrawalRequest = Schemas['WithdrawalBody'];
+export type Participant = Schemas['Participant'];
+export type Balance = Schemas['Balance'];
+export type AllocationReplay = Schemas['AllocationReplay'];
+
+export type AnalysisDetails = Schemas['Analysis'];
+export type ReportSummary = Schemas['ReportSummary'];
+export type ReportDetails = Schemas['Report'];
+export type Recomputation = Schemas['Recomputation'];
+
 export type AuditEntry = Schemas['AuditEntry'];
 export type Checkpoint = Schemas['Checkpoint'];
 export type KeptCheckpoint = Schemas['KeptCheckpoint'];
 export type Verification = Schemas['Verification'];
 export type AuditPublicKey = Schemas['AuditPublicKey'];
+
+/** One trial as a station reports it; `values` and `missing` are by measure key. */
+export interface TrialRow {
+  readonly participant: string;
+  readonly period: number;
+  readonly repetition: number;
+  /** Key of the condition as presented, whatever was assigned. */
+  readonly condition: string;
+  readonly recordId: string;
+  readonly values: Readonly<Record<string, number | boolean | null>>;
+  /** Why a value is missing. */
+  readonly missing?: Readonly<Record<string, string>>;
+  readonly startedAt: string;
+  readonly endedAt?: string;
+  readonly note?: string;
+}

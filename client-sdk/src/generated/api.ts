@@ -205,7 +205,7 @@ export interface paths {
         /** Checkpoints made so far */
         get: operations["listCheckpoints"];
         put?: never;
-        /** Sign the heads of all chains; keep the answer outside the database */
+        /** Sign the heads of the chains; keep the answer outside the database */
         post: operations["makeCheckpoint"];
         delete?: never;
         options?: never;
@@ -230,6 +230,509 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/v1/studies": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** Studies that the token can see */
+        get: operations["listStudies"];
+        put?: never;
+        /** Create a study, owned by the lab of the token */
+        post: operations["createStudy"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** One study and its state */
+        get: operations["getStudy"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/scheme-previews": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** What a scheme would hand out, before anything is registered */
+        post: operations["previewScheme"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/allocation-secret": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** The allocation secret of a closed study; each reading is logged */
+        get: operations["getAllocationSecret"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/protocol-draft": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** The protocol draft */
+        get: operations["getProtocolDraft"];
+        /** Save the protocol draft in place of the revision it names */
+        put: operations["putProtocolDraft"];
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/protocol-draft/check": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Everything that keeps the draft from being registered */
+        post: operations["checkProtocolDraft"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/protocol-versions": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** Registered versions of the protocol, without the documents */
+        get: operations["listProtocolVersions"];
+        put?: never;
+        /** Register the draft: fix and hash it; the first registration opens enrolment */
+        post: operations["registerProtocol"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/protocol-versions/{number}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** One registered version of the protocol */
+        get: operations["getProtocolVersion"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/pause": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Take nobody new for a while; those under way go on */
+        post: operations["pauseStudy"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/resume": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Take new participants again */
+        post: operations["resumeStudy"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/closure": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** End enrolment for good; those under way may finish */
+        post: operations["closeStudy"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/arrivals": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Check a participant in: somebody new gets the next slot, needs an Idempotency-Key */
+        post: operations["recordArrival"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/participants": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** Participants that the token can see, in the order of arrival */
+        get: operations["listParticipants"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/participants/{code}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** One participant */
+        get: operations["getParticipant"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/balance": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** How slots are spread over sites, sequences, periods and ordered pairs */
+        get: operations["getBalance"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/replays": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Recompute every allocation of a closed study from its secret */
+        post: operations["replayAllocations"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/participants/{code}/due": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** Which period is due, with which condition, from when until when */
+        get: operations["getDuePeriod"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/participants/{code}/period-starts": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Note that a period begins; out of turn or washout only as a deviation */
+        post: operations["startPeriod"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/participants/{code}/withdrawal": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Note that a participant stops; the slot may go to somebody else */
+        post: operations["recordWithdrawal"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/participants/{code}/void": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Undo a check-in that was a mistake, before anything was begun */
+        post: operations["voidArrival"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/analyses": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** Analyses of a study, newest first */
+        get: operations["listAnalyses"];
+        put?: never;
+        /**
+         * Have a worker run the registered plan on the data of now
+         * @description Answers at once with a queued analysis; follow it by polling or by its events. The data are frozen when a worker begins. An analysis is a look, and is logged and counted as one.
+         */
+        post: operations["requestAnalysis"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/analyses/{analysisId}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** State and progress of an analysis */
+        get: operations["getAnalysis"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/analyses/{analysisId}/events": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /**
+         * Progress of an analysis as server-sent events, until it ends
+         * @description The stream closes after `ended`, after ten minutes, or when the service stops; in the last two cases connect again: the first event tells where the analysis stands.
+         */
+        get: operations["followAnalysis"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/analyses/{analysisId}/cancellation": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Cancel an analysis: at once when queued, at its next stage when running */
+        post: operations["cancelAnalysis"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/reports": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** Filed reports of a study, newest first, without their bodies */
+        get: operations["listReports"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/reports/{reportId}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** A filed report: number, time, requester, hashes, and the body as JSON */
+        get: operations["getReport"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/reports/{reportId}/body": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** The exact bytes that the SHA-256 of the report is about */
+        get: operations["getReportBody"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/reports/{reportId}/page": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        /** The report as one HTML page that needs nothing else */
+        get: operations["getReportPage"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/reports/{reportId}/recomputations": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** Compute the report again from what it was made from, and compare the bytes */
+        post: operations["recomputeReport"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
 }
 export type webhooks = Record<string, never>;
 export interface components {
@@ -246,6 +749,105 @@ export interface components {
         AccountPage: {
             items: components["schemas"]["Account"][];
             nextCursor: string | null;
+        };
+        AllocationReplay: {
+            agrees: boolean;
+            /** @description Slots that agree before the first difference */
+            verified: number;
+            slotsIssued: number;
+            secretHash: string;
+            firstDifference: {
+                /** @enum {string} */
+                kind: "secret" | "issue-number" | "slot-number" | "protocol-version" | "sequence" | "draws" | "slot-count";
+                issueNumber: number | null;
+                expected: string;
+                recorded: string;
+            } | null;
+        };
+        AllocationSecret: {
+            /** @description The allocation secret, 32 bytes in hexadecimal */
+            secret: string;
+            /** @description SHA-256 of its bytes, as published at registration */
+            secretHash: string;
+        };
+        Analysis: {
+            /** Format: uuid */
+            id: string;
+            /** Format: uuid */
+            studyId: string;
+            /** @description The registered version whose plan is run */
+            protocolVersion: number;
+            /** @enum {string} */
+            state: "queued" | "running" | "succeeded" | "failed" | "cancelled";
+            /** @description What is being done, in plain words */
+            stage: string;
+            progress: number;
+            seed: string;
+            requestedBy: components["schemas"]["Requester"];
+            /** Format: date-time */
+            requestedAt: string;
+            startedAt: string | null;
+            finishedAt: string | null;
+            cancelRequested: boolean;
+            /** @description Why it failed; never holds a measured value */
+            failure: string | null;
+            /** @description The filed report, once the analysis has succeeded */
+            reportId: string | null;
+        };
+        AnalysisPage: {
+            items: components["schemas"]["Analysis"][];
+            nextCursor: string | null;
+        };
+        AnalysisPlan: {
+            measures: components["schemas"]["MeasurePlan"][];
+        };
+        Arrival: {
+            participant: {
+                /** Format: uuid */
+                id: string;
+                code: string;
+            };
+            /** Format: uuid */
+            siteId: string;
+            /** @description Place in the list of the site, from 1 */
+            slotNumber: number;
+            /** @description Level keys joined by a full stop; `all` without between factors */
+            stratum: string;
+            /** @description The version under which the participant takes part */
+            protocolVersion: number;
+            /**
+             * Format: date-time
+             * @description First arrival
+             */
+            arrivedAt: string;
+            /** @description Whether the slot was taken over after a withdrawal */
+            replacement: boolean;
+            washout: components["schemas"]["Washout"];
+            /** @description The sequence, by period */
+            periods: {
+                /** @description From 1 */
+                period: number;
+                /** @description From 1 */
+                visit: number;
+                condition: components["schemas"]["Condition"];
+                startedAt: string | null;
+                completedAt: string | null;
+            }[];
+        };
+        ArrivalBody: {
+            /** @constant */
+            kind: "new";
+            /** @description When absent, the service issues one with a check character */
+            code?: string;
+            /** @description Absent when the protocol has no between factors */
+            stratum?: {
+                [key: string]: string;
+            };
+        } | {
+            /** @constant */
+            kind: "returning";
+            /** @description Pseudonymous code: 1 to 40 letters, digits, hyphens, underscores; case is ignored */
+            code: string;
         };
         AuditEntry: {
             number: number;
@@ -265,11 +867,65 @@ export interface components {
             /** @description PEM, Ed25519 */
             publicKey: string;
         };
+        Balance: {
+            protocolVersion: number;
+            conditions: components["schemas"]["Condition"][];
+            /** @description Condition keys by period; counts by sequence are in this order */
+            sequences: string[][];
+            /** @description Site × stratum: planned counts differ by at most one */
+            cells: {
+                /** Format: uuid */
+                siteId: string;
+                stratum: string;
+                /** @description Slots issued, by sequence */
+                planned: number[];
+                /** @description Participants who completed every period, by sequence */
+                completed: number[];
+            }[];
+            sites: {
+                /** Format: uuid */
+                siteId: string;
+                targetEnrolment: number;
+                /** @description Under all versions */
+                slotsIssued: number;
+                /** @description Slots issued, by sequence */
+                planned: number[];
+                /** @description Participants who completed every period, by sequence */
+                completed: number[];
+            }[];
+            conditionByPeriod: {
+                condition: string;
+                /** @description By period */
+                planned: number[];
+                /** @description By period; of those who withdrew later too */
+                completed: number[];
+            }[];
+            orderedPairs: {
+                first: string;
+                second: string;
+                planned: number;
+                completed: number;
+            }[];
+        };
         Checkpoint: {
             /** @description Canonical JSON: the head of every chain, the time and the key */
             document: string;
             /** @description Ed25519 over the UTF-8 of `document`, base64 */
             signature: string;
+        };
+        Condition: {
+            /** @description Level keys in factor order, joined by a full stop */
+            key: string;
+            label: string;
+        };
+        ContrastChoice: {
+            /** @constant */
+            kind: "all-pairs";
+        } | {
+            /** @constant */
+            kind: "against-reference";
+            /** @description Lower-case words joined by hyphens */
+            reference: string;
         };
         CreateAccountBody: {
             name: string;
@@ -283,6 +939,10 @@ export interface components {
             name: string;
         };
         CreateStationBody: {
+            name: string;
+        };
+        CreateStudyBody: {
+            /** @description Working name, unique in the lab; the protocol has the title */
             name: string;
         };
         CreateTokenBody: {
@@ -360,6 +1020,72 @@ export interface components {
             /** @description Shown this once; null when an idempotent repeat answers again */
             token: string | null;
         };
+        DuePeriod: {
+            participant: {
+                /** Format: uuid */
+                id: string;
+                code: string;
+            };
+            /**
+             * @description due: may start now; too-early: the washout has not passed; too-late: its maximum
+             * @enum {string}
+             */
+            state: "due" | "too-early" | "too-late" | "finished";
+            /** @description The first period not started; null when finished */
+            period: number | null;
+            visit: number | null;
+            condition: components["schemas"]["Condition"] | null;
+            /** @description Null for no bound */
+            dueFrom: string | null;
+            /** @description Null for no bound */
+            dueUntil: string | null;
+            washout: components["schemas"]["Washout"];
+            /** Format: date-time */
+            judgedAt: string;
+        };
+        ExclusionRule: {
+            /** @constant */
+            kind: "range";
+            /** @description Lower-case words joined by hyphens */
+            measure: string;
+            minimum: number | null;
+            maximum: number | null;
+        } | {
+            /** @constant */
+            kind: "time-out";
+            /** @description Lower-case words joined by hyphens */
+            measure: string;
+            limit: number;
+        } | {
+            /** @constant */
+            kind: "incomplete-participant";
+            minimumPeriods: number;
+        };
+        /** @description What a count is out of or over */
+        Exposure: {
+            /** @constant */
+            kind: "constant";
+            value: number;
+            unit: string;
+        } | {
+            /** @constant */
+            kind: "measure";
+            /** @description Lower-case words joined by hyphens */
+            measure: string;
+        };
+        Factor: {
+            /** @description Lower-case words joined by hyphens */
+            key: string;
+            /** @description What people read */
+            label: string;
+            /** @description In order; at least two */
+            levels: components["schemas"]["Level"][];
+        };
+        Hypothesis: {
+            /** @description Lower-case words joined by hyphens */
+            key: string;
+            statement: string;
+        };
         KeptCheckpoint: {
             /** Format: uuid */
             id: string;
@@ -383,9 +1109,145 @@ export interface components {
             items: components["schemas"]["Lab"][];
             nextCursor: string | null;
         };
+        Level: {
+            /** @description Lower-case words joined by hyphens */
+            key: string;
+            /** @description What people read */
+            label: string;
+        };
+        /** @description A response that trials record */
+        Measure: {
+            /** @description Lower-case words joined by hyphens */
+            key: string;
+            /** @description What people read */
+            label: string;
+            unit: string | null;
+            /** @enum {string} */
+            scale: "continuous" | "time-like" | "count" | "binary" | "ordinal";
+            /** @enum {string} */
+            direction: "lower-is-better" | "higher-is-better" | "neither";
+            /** @enum {string} */
+            taken: "each-trial" | "once-a-period";
+            /** @description Values outside are implausible: stored and flagged, never refused */
+            validRange: {
+                minimum: number | null;
+                maximum: number | null;
+            } | null;
+            /** @description Decimal places in reports */
+            decimals: number;
+            /** @description Ordinal measures only: the points of the rating, ascending */
+            points: {
+                value: number;
+                /** @description What people read */
+                label: string;
+            }[] | null;
+            /** @description Counts only */
+            exposure: components["schemas"]["Exposure"] | null;
+        };
+        MeasurePlan: {
+            /** @description Lower-case words joined by hyphens */
+            measure: string;
+            /** @enum {string} */
+            role: "primary" | "secondary";
+            /** @enum {string} */
+            method: "repeated-measures-anova" | "friedman";
+            /**
+             * @description The one primary estimate of the comparisons; the other stands beside it
+             * @enum {string}
+             */
+            primaryEstimate: "adjusted-for-period" | "unadjusted";
+            contrasts: components["schemas"]["ContrastChoice"];
+            /** @enum {string} */
+            multiplicity: "holm" | "bonferroni" | "none";
+            alpha: number;
+            /** @description Margin in the unit of the measure, or a ratio for time-like measures */
+            equivalence: {
+                lower: number;
+                upper: number;
+            } | null;
+        };
+        Participant: {
+            /** Format: uuid */
+            id: string;
+            /** @description Null once the check-in was voided or the code erased */
+            code: string | null;
+            /** Format: uuid */
+            siteId: string;
+            slotNumber: number;
+            stratum: string;
+            protocolVersion: number;
+            /** Format: date-time */
+            arrivedAt: string;
+            replacement: boolean;
+            /** @description Null while the participant takes part, and when finished */
+            ending: components["schemas"]["ParticipantEnding"] | null;
+            erasedAt: string | null;
+            /** @description Condition keys by period; null for roles that must not count sequences */
+            sequence: string[] | null;
+            periods: {
+                period: number;
+                startedAt: string | null;
+                completedAt: string | null;
+                deviations: ("out-of-turn" | "too-early" | "too-late")[];
+            }[];
+        };
+        ParticipantEnding: {
+            /** @constant */
+            kind: "withdrawn";
+            /** Format: date-time */
+            at: string;
+            /** @enum {string} */
+            reasonCode: "own-wish" | "unwell" | "safety" | "no-show" | "equipment" | "schedule" | "other";
+            periodReached: number;
+        } | {
+            /** @constant */
+            kind: "void";
+            /** Format: date-time */
+            at: string;
+        };
+        ParticipantPage: {
+            items: components["schemas"]["Participant"][];
+            nextCursor: string | null;
+        };
+        PeriodPlan: {
+            /** @description Number of periods in every sequence */
+            count: number;
+            /** @description Trials of one participant in one period */
+            repetitions: number;
+            /** @description Period numbers from 1 by visit: [[1, 2], [3, 4]] is two visits of two periods */
+            visits: number[][];
+            washout: components["schemas"]["Washout"];
+        };
+        PeriodStart: {
+            /** Format: uuid */
+            participantId: string;
+            period: number;
+            visit: number;
+            condition: components["schemas"]["Condition"];
+            /** Format: date-time */
+            startedAt: string;
+            deviations: ("out-of-turn" | "too-early" | "too-late")[];
+        };
+        PeriodStartBody: {
+            period: number;
+            /**
+             * Format: date-time
+             * @description When it really was, for a station that was offline; now when absent
+             */
+            startedAt?: string;
+            /** @description Needed to start a period out of turn, too early or too late; kept as a deviation */
+            deviation?: {
+                reason: string;
+            };
+        };
+        /** @description The rule by which sequences are handed out */
+        PolicyChoice: {
+            /** @constant */
+            kind: "balanced";
+        };
         Problem: {
             /** @enum {string} */
-            type: "/problems/invalid-request" | "/problems/missing-idempotency-key" | "/problems/missing-operator" | "/problems/not-authenticated" | "/problems/not-permitted" | "/problems/not-found" | "/problems/method-not-allowed" | "/problems/not-acceptable" | "/problems/already-exists" | "/problems/idempotency-key-reused" | "/problems/revision-conflict" | "/problems/no-draft" | "/problems/protocol-not-registrable" | "/problems/reason-needed" | "/problems/wrong-state" | "/problems/account-closed" | "/problems/site-not-in-study" | "/problems/site-full" | "/problems/participant-known" | "/problems/participant-unknown" | "/problems/participant-ended" | "/problems/participant-erased" | "/problems/code-not-pseudonymous" | "/problems/code-check-failed" | "/problems/stratum-unknown" | "/problems/period-not-due" | "/problems/period-already-started" | "/problems/has-data" | "/problems/upload-refused" | "/problems/correction-not-possible" | "/problems/analysis-finished" | "/problems/snapshot-erased" | "/problems/audit-broken" | "/problems/payload-too-large" | "/problems/unsupported-media-type" | "/problems/too-many-requests" | "/problems/internal-error" | "/problems/not-ready";
+            type: "/problems/invalid-request" | "/problems/missing-idempotency-key" | "/problems/missing-operator" | "/problems/not-authenticated" | "/problems/not-permitted" | "/problems/not-found" | "/problems/method-not-allowed" | "/problems/not-acceptable" | "/problems/already-exists" | "/problems/idempotency-key-reused" | "/problems/revision-conflict" | "/problems/no-draft" | "/problems/protocol-not-registrable" | "/problems/reason-needed" | "/problems/wrong-state" | "/problems/account-closed" | "/problems/site-not-in-study" | "/problems/site-full" | "/problems/participant-known" | "/problems/participant-unknown" | "/problems/participant-ended" | "/problems/participant-erased" | "/problems/code-not-pseudonymous" | "/problems/code-check-failed" | "/problems/stratum-unknown" | "/problems/period-not-due" | "/problems/period-already-started" | "/problems/has-data" | "/problems/upload-refused" | "/problems/correction-not-possible" | "/problems/analysis-finished" | "/problems/snapshot-erased" | "/problems/report-altered" | "/problems/audit-broken" | "/problems/payload-too-large" | "/problems/unsupported-media-type" | "/problems/too-many-requests" | "/problems/internal-error" | "/problems/not-ready";
             title: string;
             status: number;
             detail: string;
@@ -401,6 +1263,233 @@ export interface components {
                 row?: number;
             }[];
         };
+        ProtocolDocument: {
+            title: string;
+            rationale: string;
+            hypotheses: components["schemas"]["Hypothesis"][];
+            /** @description Their product gives the conditions; the last factor varies fastest */
+            withinFactors: components["schemas"]["Factor"][];
+            /** @description Their product gives the strata */
+            betweenFactors: components["schemas"]["Factor"][];
+            scheme: components["schemas"]["SchemeChoice"];
+            policy: components["schemas"]["PolicyChoice"];
+            replacement: components["schemas"]["ReplacementRule"];
+            periods: components["schemas"]["PeriodPlan"];
+            sites: components["schemas"]["SiteTarget"][];
+            measures: components["schemas"]["Measure"][];
+            /** @description Applied in this order */
+            exclusions: components["schemas"]["ExclusionRule"][];
+            analysis: components["schemas"]["AnalysisPlan"];
+        };
+        ProtocolDraft: {
+            /** @description The version that the draft becomes when it is registered */
+            number: number;
+            revision: number;
+            /** Format: date-time */
+            createdAt: string;
+            protocol: components["schemas"]["ProtocolDocument"];
+        };
+        ProtocolDraftCheck: {
+            revision: number;
+            registrable: boolean;
+            faults: {
+                /** @description JSON pointer (RFC 6901) into the protocol document */
+                pointer: string;
+                code: string;
+                message: string;
+            }[];
+        };
+        ProtocolDraftRevision: {
+            /** @description The version that the draft becomes when it is registered */
+            number: number;
+            revision: number;
+        };
+        ProtocolVersion: {
+            /** Format: uuid */
+            studyId: string;
+            number: number;
+            /** @description Of the canonical JSON (RFC 8785) of `protocol`, hexadecimal */
+            sha256: string;
+            reason: string | null;
+            /** Format: date-time */
+            registeredAt: string;
+            protocol: components["schemas"]["ProtocolDocument"];
+        };
+        ProtocolVersionPage: {
+            items: components["schemas"]["ProtocolVersionSummary"][];
+            nextCursor: string | null;
+        };
+        ProtocolVersionSummary: {
+            /** Format: uuid */
+            studyId: string;
+            number: number;
+            /** @description Of the canonical JSON (RFC 8785) of `protocol`, hexadecimal */
+            sha256: string;
+            reason: string | null;
+            /** Format: date-time */
+            registeredAt: string;
+        };
+        PutProtocolDraftBody: {
+            /** @description Of the draft that this one replaces; 0 when there is none */
+            revision: number;
+            protocol: components["schemas"]["ProtocolDocument"];
+        };
+        Recomputation: {
+            /** @description Whether the bytes computed now are the bytes that were filed */
+            same: boolean;
+            /** @description Of the body computed now */
+            sha256: string;
+            /** @description As recorded when the report was filed */
+            filedSha256: string;
+            pageSame: boolean;
+            /** @description What computed it now */
+            engineVersion: string;
+            filedEngineVersion: string;
+        };
+        RegisterProtocolBody: {
+            /** @description The revision of the draft that is to be registered */
+            revision: number;
+            /** @description Why the protocol is amended; needed from version 2 on */
+            reason?: string;
+        };
+        /** @description Who takes a vacated slot: the next arrival of its site and stratum, or nobody */
+        ReplacementRule: {
+            /** @constant */
+            kind: "same-site";
+        } | {
+            /** @constant */
+            kind: "none";
+        };
+        Report: {
+            /** Format: uuid */
+            id: string;
+            /** Format: uuid */
+            studyId: string;
+            /** @description From 1 in each study, without a gap */
+            number: number;
+            /** Format: date-time */
+            createdAt: string;
+            requestedBy: components["schemas"]["Requester"];
+            /** Format: uuid */
+            analysisId: string;
+            /** Format: uuid */
+            snapshotId: string;
+            protocolVersion: number;
+            protocolSha256: string;
+            snapshotSha256: string;
+            engineVersion: string;
+            seed: string;
+            /** @description Of the exact bytes of the body */
+            sha256: string;
+            /** @description Of the exact bytes of the page */
+            pageSha256: string;
+            /** @description What is hashed, as JSON; number, time and requester stand outside it */
+            body: {
+                [key: string]: unknown;
+            };
+        };
+        ReportPage: {
+            items: components["schemas"]["ReportSummary"][];
+            nextCursor: string | null;
+        };
+        ReportSummary: {
+            /** Format: uuid */
+            id: string;
+            /** Format: uuid */
+            studyId: string;
+            /** @description From 1 in each study, without a gap */
+            number: number;
+            /** Format: date-time */
+            createdAt: string;
+            requestedBy: components["schemas"]["Requester"];
+            /** Format: uuid */
+            analysisId: string;
+            /** Format: uuid */
+            snapshotId: string;
+            protocolVersion: number;
+            protocolSha256: string;
+            snapshotSha256: string;
+            engineVersion: string;
+            seed: string;
+            /** @description Of the exact bytes of the body */
+            sha256: string;
+            /** @description Of the exact bytes of the page */
+            pageSha256: string;
+        };
+        RequestAnalysisBody: {
+            /** @description Seed of whatever the analysis draws at random, 128 bits in hexadecimal; made when absent */
+            seed?: string;
+        };
+        Requester: {
+            /** @enum {string} */
+            role: "administrator" | "study-lead" | "site-coordinator" | "station" | "analyst" | "auditor" | "service";
+            tokenId: string | null;
+            accountId: string | null;
+            stationId: string | null;
+            operator: string | null;
+        };
+        /** @description Where the sequences come from */
+        SchemeChoice: {
+            /** @constant */
+            kind: "complete-permutations";
+        } | {
+            /** @constant */
+            kind: "cyclic-latin-square";
+        } | {
+            /** @constant */
+            kind: "williams";
+        } | {
+            /** @constant */
+            kind: "custom-list";
+            /** @description Condition keys by period, one row a sequence */
+            sequences: string[][];
+        };
+        SchemePreview: {
+            conditions: components["schemas"]["Condition"][];
+            sequences: {
+                /** @description From 1, in the order of the scheme */
+                number: number;
+                /** @description Condition keys by period */
+                conditions: string[];
+                /** @description Condition labels by period */
+                labels: string[];
+            }[];
+            /** @description One block is the whole set of sequences */
+            participantsPerBlock: number;
+            conditionByPeriod: {
+                condition: string;
+                /** @description By period: sequences that present it there */
+                counts: number[];
+            }[];
+            orderedPairs: {
+                first: string;
+                second: string;
+                /** @description How often `second` comes immediately after `first` */
+                count: number;
+            }[];
+            /** @description Every condition equally often in every period */
+            uniformOnPeriods: boolean;
+            /** @description Every ordered pair of different conditions equally often, none after itself */
+            carryoverBalanced: boolean;
+            targets: {
+                targetEnrolment: number;
+                /** @description Whole blocks for at least that many */
+                blocks: number;
+                participants: number;
+                aboveTarget: number;
+            }[];
+        };
+        SchemePreviewBody: {
+            withinFactors: components["schemas"]["Factor"][];
+            scheme: components["schemas"]["SchemeChoice"];
+            /** @description Number of periods in every sequence */
+            periods: number;
+            /**
+             * @description For each, how many participants make whole blocks
+             * @default []
+             */
+            targetEnrolments: number[];
+        };
         Site: {
             /** Format: uuid */
             id: string;
@@ -414,6 +1503,15 @@ export interface components {
             items: components["schemas"]["Site"][];
             nextCursor: string | null;
         };
+        SiteTarget: {
+            /** Format: uuid */
+            siteId: string;
+            /** @description Slots at this site: how many participants it may enrol, replacements not counted */
+            targetEnrolment: number;
+        };
+        StateChangeBody: {
+            reason?: string;
+        };
         Station: {
             /** Format: uuid */
             id: string;
@@ -425,6 +1523,32 @@ export interface components {
         };
         StationPage: {
             items: components["schemas"]["Station"][];
+            nextCursor: string | null;
+        };
+        Study: {
+            /** Format: uuid */
+            id: string;
+            /**
+             * Format: uuid
+             * @description The lab that owns the study
+             */
+            labId: string;
+            name: string;
+            /**
+             * @description draft: nothing registered yet; enrolling; paused: nobody new is taken for a while; closed: nobody new is taken any more, those under way may finish
+             * @enum {string}
+             */
+            state: "draft" | "enrolling" | "paused" | "closed";
+            /** @description The registered protocol version in force */
+            currentVersion: number | null;
+            /** @description SHA-256 of the allocation secret, published when the study is registered */
+            secretHash: string | null;
+            /** Format: date-time */
+            createdAt: string;
+            closedAt: string | null;
+        };
+        StudyPage: {
+            items: components["schemas"]["Study"][];
             nextCursor: string | null;
         };
         Token: {
@@ -468,6 +1592,29 @@ export interface components {
         VerificationBody: {
             /** @description A checkpoint kept outside the database */
             checkpoint?: components["schemas"]["Checkpoint"];
+        };
+        VoidArrivalBody: {
+            reason: string;
+        };
+        /** @description Rest between periods */
+        Washout: {
+            /** @description ISO 8601 duration from the start of one period to the next */
+            minimum: string;
+            /** @description ISO 8601 duration, or null for no limit */
+            maximum: string | null;
+        };
+        WithdrawalBody: {
+            /** @enum {string} */
+            reasonCode: "own-wish" | "unwell" | "safety" | "no-show" | "equipment" | "schedule" | "other";
+            /** @description The last period that was begun; 0 when none was */
+            periodReached: number;
+            /** @description Free text; the log holds a commitment to it */
+            note?: string;
+            /**
+             * Format: date-time
+             * @description When it really was, for a station that was offline; now when absent
+             */
+            withdrawnAt?: string;
         };
     };
     responses: never;
@@ -1091,6 +2238,1191 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["Verification"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    listStudies: {
+        parameters: {
+            query?: {
+                limit?: number;
+                cursor?: string;
+            };
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["StudyPage"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    createStudy: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["CreateStudyBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Study"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getStudy: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Study"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    previewScheme: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["SchemePreviewBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["SchemePreview"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getAllocationSecret: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["AllocationSecret"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getProtocolDraft: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ProtocolDraft"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    putProtocolDraft: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["PutProtocolDraftBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ProtocolDraftRevision"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    checkProtocolDraft: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ProtocolDraftCheck"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    listProtocolVersions: {
+        parameters: {
+            query?: {
+                limit?: number;
+                cursor?: string;
+            };
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ProtocolVersionPage"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    registerProtocol: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["RegisterProtocolBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ProtocolVersion"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getProtocolVersion: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                studyId: string;
+                number: number;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ProtocolVersion"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    pauseStudy: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["StateChangeBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Study"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    resumeStudy: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["StateChangeBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Study"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    closeStudy: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["StateChangeBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Study"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    recordArrival: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["ArrivalBody"];
+            };
+        };
+        responses: {
+            /** @description Somebody returning */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Arrival"];
+                };
+            };
+            /** @description Somebody new */
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Arrival"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    listParticipants: {
+        parameters: {
+            query?: {
+                limit?: number;
+                cursor?: string;
+            };
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ParticipantPage"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getParticipant: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                studyId: string;
+                /** @description Code or id of the participant */
+                code: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Participant"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getBalance: {
+        parameters: {
+            query?: {
+                /** @description The version in force when absent: balance is kept within one version */
+                protocolVersion?: number;
+            };
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Balance"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    replayAllocations: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["AllocationReplay"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getDuePeriod: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                studyId: string;
+                /** @description Code or id of the participant */
+                code: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["DuePeriod"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    startPeriod: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+                /** @description Code or id of the participant */
+                code: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["PeriodStartBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["PeriodStart"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    recordWithdrawal: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+                /** @description Code or id of the participant */
+                code: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["WithdrawalBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Participant"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    voidArrival: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+                /** @description Code or id of the participant */
+                code: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["VoidArrivalBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Participant"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    listAnalyses: {
+        parameters: {
+            query?: {
+                limit?: number;
+                cursor?: string;
+            };
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["AnalysisPage"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    requestAnalysis: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["RequestAnalysisBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            202: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Analysis"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getAnalysis: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                analysisId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Analysis"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    followAnalysis: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                analysisId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description An event stream */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "text/event-stream": string;
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    cancelAnalysis: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                analysisId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Analysis"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    listReports: {
+        parameters: {
+            query?: {
+                limit?: number;
+                cursor?: string;
+            };
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["ReportPage"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getReport: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                reportId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Report"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getReportBody: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                reportId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Canonical JSON (RFC 8785), with its digest in Repr-Digest and ETag */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": {
+                        [key: string]: unknown;
+                    };
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getReportPage: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                reportId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description HTML with its style and figures inside */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "text/html": string;
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    recomputeReport: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                reportId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Recomputation"];
                 };
             };
             /** @description Problem details (RFC 9457) */

@@ -40,7 +40,7 @@ export type DuePeriod =
  *   duration cannot be read
  */
 export function duePeriod(
-  plan: PeriodPlan,
+  plan: Pick<PeriodPlan, 'count' | 'visits' | 'washout'>,
   starts: readonly PeriodStart[],
   nowMs: number,
 ): DuePeriod {
