@@ -69,7 +69,7 @@ export function mixedValues(
     force: 60 - 4 * condition + 6 * noise,
     drops: Math.round(9 * noise) + condition,
     pegs: 25,
-    seated: noise > 0.3,
+    seated: (person * person + person * condition + period) % 3 !== 0,
     comfort: 1 + ((person + 2 * condition + period) % 3),
   };
 }
