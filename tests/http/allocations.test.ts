@@ -1,5 +1,6 @@
 import { afterAll, beforeAll, describe, expect, it } from 'vitest';
 import { checkCharacterHolds } from '#core/allocation/participant-code.ts';
+import { eraseParticipantRecords } from '#server/allocations/service.ts';
 import { startTestService, type TestService } from '../support/app.ts';
 import {
   arriveNew,
@@ -249,7 +250,6 @@ describe('participants', () => {
   });
 
   it('are erased to a tombstone that no kept answer gives away', async () => {
-    const { eraseParticipantRecords } = await import('#server/allocations/service.ts');
     const [station] = places.ridge.stations;
     const arrival = { code: 'FORGET-ME', key: 'forget-me' };
     const { id } = (await arriveNew(station, studyId, arrival)).body.participant;
