@@ -122,7 +122,7 @@ describe('a job that two workers have at the same time', () => {
       logger: service.logger,
       supervise: false,
     });
-    const id = await whileLocked('snapshots', 'share row exclusive', async () => {
+    const id = await whileLocked('participants', 'access exclusive', async () => {
       const requested = await requestAnalysis();
       await waiting(1);
       await service.database.inSqlTransaction((tx) =>
