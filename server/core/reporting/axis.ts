@@ -12,7 +12,7 @@ const TICKS_AIM = 5;
 
 /** Values closer together than this, by their size, are drawn as one: ticks could not tell them. */
 const SPAN_RELATIVE_MIN = 1e-9;
-/** Nothing that is measured is smaller; below, an axis would need decimals beyond double precision. */
+/** Nothing measured is smaller; an axis would need decimals beyond double precision. */
 const SPAN_MIN = 1e-15;
 
 /**

@@ -64,12 +64,13 @@ export function mixedValues(
 ): SnapshotTrial['values'] {
   const noise =
     ((person * person * 37 + person * condition * 11 + period * condition * 23) % 17) / 17;
+  const seven = (5 * person ** 2 + 3 * person * condition + (period + 1) * condition) % 7;
   return {
     time: 20 + 3 * condition - period + 4 * noise + (person % 5),
     force: 60 - 4 * condition + 6 * noise,
     drops: Math.round(9 * noise) + condition,
     pegs: 25,
-    seated: (person * person + person * condition + period) % 3 !== 0,
-    comfort: 1 + ((person + 2 * condition + period) % 3),
+    seated: seven > 2,
+    comfort: 1 + Math.floor((3 * seven) / 7),
   };
 }
