@@ -82,7 +82,7 @@ export function createAnalysisRunner(options: RunnerOptions): AnalysisRunner {
   };
 }
 
-/** Marks the analysis as running; null when it has ended, or ends here because of a cancellation. */
+/** Marks the analysis as running; null when it has ended, or ends here since it was cancelled. */
 async function take(database: Database, id: string): Promise<Taken | null> {
   const taken = await database.inSqlTransaction(async (tx) => {
     const analysis = await store.lockAnalysis(tx, id);

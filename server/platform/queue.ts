@@ -6,8 +6,8 @@ import type { Executor, SqlValue } from './database.ts';
 const QUEUE_SCHEMA = 'pgboss';
 
 /**
- * A worker tells every 4 s that it still holds its job. A job whose worker stayed silent for 15 s is
- * given to another by the next supervision, at most 5 s later: a killed worker costs under half a
+ * A worker tells every 4 s that it still holds its job. A job whose worker stayed silent for 15 s
+ * is given to another by the next supervision, at most 5 s later: a killed worker costs under half a
  * minute.
  */
 const HEARTBEAT_SECONDS = 15;
@@ -24,8 +24,8 @@ const POLLING_SECONDS = 2;
 const RETRIES = 3;
 
 /**
- * Every queue of the service. Jobs that ran out of tries go to the queue named as `givenUp`, where a
- * worker records the failure, so that a job can end in silence only when no worker is left.
+ * Every queue of the service. Jobs that ran out of tries go to the queue named as `givenUp`, where
+ * a worker records the failure, so that a job can end in silence only when no worker is left.
  */
 const QUEUES = {
   'run-analysis': { givenUp: 'analysis-given-up' },

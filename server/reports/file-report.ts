@@ -8,7 +8,7 @@ import * as store from './store.ts';
 
 /**
  * Stores a report under the next number of its study, in the caller's transaction, which holds the
- * lock on the study. Audit `report-filed`. An analysis has one report: the database refuses another.
+ * lock on the study. Audit `report-filed`. The database refuses a second report of an analysis.
  */
 export async function fileReport(tx: SqlTransaction, report: ReportToFile): Promise<void> {
   const { computed } = report;

@@ -41,8 +41,8 @@ async function recompute(database: Database, report: ReportRow): Promise<Compute
     case 'erased':
       throw new ProblemError(
         'snapshot-erased',
-        `The data of ${ended.participants} participants under report ${report.number} were erased ` +
-          'since it was filed. It can be read and checked against its hash, not computed again.',
+        `Since report ${report.number} was filed, the data of ${erased(ended.participants)} under ` +
+          'it were erased. It can be read and checked against its hash, not computed again.',
       );
     case 'altered':
       throw new ProblemError(
@@ -53,4 +53,8 @@ async function recompute(database: Database, report: ReportRow): Promise<Compute
     case 'fault':
       throw new Error(`The recomputation of report ${report.id} ended as ${ended.kind}.`);
   }
+}
+
+function erased(participants: number): string {
+  return participants === 1 ? '1 participant' : `${participants} participants`;
 }

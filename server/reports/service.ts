@@ -54,8 +54,8 @@ export function createReportsService(database: Database) {
     },
 
     /**
-     * Computes a filed report again from its protocol, snapshot and seed, in a thread, one at a time
-     * in this process, and compares the bytes. Audit `report-recomputed`.
+     * Computes a filed report again from its protocol, snapshot and seed, in a thread, one at a
+     * time in this process, and compares the bytes. Audit `report-recomputed`.
      *
      * @throws {ProblemError} `not-found`; `snapshot-erased` when a participant was erased since;
      *   `report-altered` when protocol or snapshot are no longer what the report was made from

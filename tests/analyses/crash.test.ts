@@ -78,7 +78,7 @@ const counted = async () => {
 
 // common practice, no source: at-least-once delivery with a result that is stored exactly once.
 describe('a worker that is killed in the middle of a job', () => {
-  it('leaves the job to another, which files exactly one report from the same snapshot', async () => {
+  it('leaves the job to another, which files one report from the same snapshot', async () => {
     const first = await startWorker(service.databaseUrl);
     const id = await whileLocked('reports', 'share row exclusive', async () => {
       const requested = await requestAnalysis();

@@ -73,7 +73,7 @@ describe('an analysis without a worker', () => {
     await study.lead.post(`/v1/analyses/${first.body.id}/cancellation`);
   });
 
-  it('is refused for a study without a registered protocol and for a seed that is none', async () => {
+  it('is refused without a registered protocol and for a seed that is none', async () => {
     const draft = await study.lead.post('/v1/studies', { name: 'Not registered yet' });
     const early = await study.lead.post(`/v1/studies/${draft.body.id}/analyses`, {});
     expect([early.status, early.body.type]).toEqual([409, '/problems/wrong-state']);
