@@ -299,8 +299,8 @@ export async function participantCodes(
 
 /**
  * Notes that a trial of a period is there, whether or not its start was noted: from then on the
- * check-in cannot be voided. The participants cannot be ended until the transaction is over, so this
- * comes late in it.
+ * check-in cannot be voided. The participants cannot be ended until the transaction is over, so
+ * this comes late in it.
  *
  * @throws {ProblemError} `participant-ended` when a check-in was voided in the meantime
  */

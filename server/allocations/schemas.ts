@@ -12,7 +12,7 @@ const Code = text(200)
 
 export const ParticipantParams = z.strictObject({
   studyId: StudyId,
-  code: z.string().min(1).max(200).describe('Code or id of the participant'),
+  code: text(200).min(1).describe('Code or id of the participant'),
 });
 
 const Stratum = z

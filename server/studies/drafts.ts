@@ -83,8 +83,8 @@ export function requireRevision(current: number, named: number): void {
 }
 
 /**
- * Every fault at once: the core's rules, and whether the sites exist. A lead may name sites of other
- * labs, which must have told their id: nobody can list another lab's sites.
+ * Every fault at once: the core's rules, and whether the sites exist. A lead may name sites of
+ * other labs, which must have told their id: nobody can list another lab's sites.
  */
 export async function protocolFaults(
   tx: RecordsTransaction,

@@ -176,7 +176,7 @@ describe('a vacated slot', () => {
 });
 
 describe('a voided check-in', () => {
-  it('frees its code and its slot, which is offered before any other and is no replacement', async () => {
+  it('frees its code and its slot, which is offered before any other', async () => {
     const own = await openStudy(places.lead, coldStoreProtocol(places, 10));
     const arrivals = { code: 'A2', key: randomUUID() };
     await arriveNew(station(), own, { code: 'A1' });
@@ -239,7 +239,7 @@ describe('a voided check-in', () => {
 });
 
 describe('an amendment', () => {
-  it('leaves who was allocated under the old version, and balances anew under its own', async () => {
+  it('leaves who was allocated as they are, and balances anew within its own version', async () => {
     const protocol = coldStoreProtocol(places, 6);
     const own = await openStudy(places.lead, protocol);
     const first = await arriveNew(station(), own, { code: 'A1' });

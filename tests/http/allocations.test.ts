@@ -62,7 +62,7 @@ describe('an arrival', () => {
     for (const { condition } of periods) expect(condition.label).not.toBe(condition.key);
   });
 
-  it('of somebody returning answers the same, at any station of the site, in either case', async () => {
+  it('of somebody returning answers the same, at any station of the site', async () => {
     const first = await arriveNew(places.harbour.stations[0], studyId, { code: 'H-02' });
     const again = await returning(places.harbour.stations[1], 'h-02');
     expect(again.status).toBe(200);
@@ -165,6 +165,7 @@ describe('an arrival', () => {
     for (const refused of [
       await returning(fen, 'H-ONLY'),
       await returning(fen, 'nobody'),
+      await fen.get(`/v1/studies/${studyId}/participants/%20/due`),
       await fen.get(`${path}/due`),
       await fen.post(`${path}/period-starts`, { period: 1 }),
       await fen.post(`${path}/withdrawal`, withdrawal),
@@ -175,6 +176,13 @@ describe('an arrival', () => {
       expect(problemOf(refused)).toEqual([404, 'participant-unknown']);
     }
     expect(problemOf(await places.otherLead.get(path))).toEqual([404, 'not-found']);
+  });
+
+  it('with a code in the path that no text can hold is refused as such', async () => {
+    const path = `/v1/studies/${studyId}/participants/a%00b/due`;
+    const refused = await places.harbour.stations[0].get(path);
+    expect(problemOf(refused)).toEqual([400, 'invalid-request']);
+    expect(refused.body.faults[0].pointer).toBe('/path/code');
   });
 
   it('is refused while paused and once closed, and goes on for those who return', async () => {
