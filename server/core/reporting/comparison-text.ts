@@ -9,7 +9,7 @@ import {
   signedIntervalText,
   signedText,
 } from './number-text.ts';
-import { derivedDecimals, type PageContext } from './page-context.ts';
+import { type PageContext, responseDecimals, responseUnit } from './page-context.ts';
 
 /** Decimals of a ratio of geometric means. */
 export const RATIO_DECIMALS = 3;
@@ -60,18 +60,19 @@ function estimateText(
       `${change} ${direction} it (${ends})`
     );
   }
-  const decimals = derivedDecimals(measure);
-  const unit = measure.unit === null ? '' : ` ${measure.unit}`;
+  const decimals = responseDecimals(measure);
+  const unit = responseUnit(measure);
   const ends = interval.estimable
     ? `${level} interval of the difference ${signedIntervalText(interval, decimals)}${unit}`
     : `no interval: ${interval.detail}`;
+  const subject = measure.scale === 'binary' ? `Share of yes in ${measure.label}` : measure.label;
   const size = numberText(Math.abs(estimate), decimals);
   if (!/[1-9]/.test(size)) {
-    return `${measure.label} was estimated the same under both, to the decimals shown (${ends})`;
+    return `${subject} was estimated the same under both, to the decimals shown (${ends})`;
   }
   const direction = estimate > 0 ? 'higher' : 'lower';
   return (
-    `${measure.label} was estimated ${size}${unit} ${direction} under ${first} ` +
+    `${subject} was estimated ${size}${unit} ${direction} under ${first} ` +
     `than under ${second} (${ends})`
   );
 }
@@ -91,19 +92,20 @@ function whatItDoesNotSay(comparison: ComparisonEstimate, { alpha }: ComparisonS
 }
 
 /** The effect size in the trade's usual form, with its interval where it has one. */
-export function effectSizeText({ effectSizes }: ComparisonEstimate): string {
+export function effectSizeText({ effectSizes }: ComparisonEstimate): Markup {
   switch (effectSizes.kind) {
     case 'standardised-difference': {
       const { dz, dav } = effectSizes;
-      const average = dav.estimable ? `; d_av ${signedText(dav.estimate, 2)}` : '';
-      return `d_z ${signedText(dz.estimate, 2)} (${intervalText(dz.interval, 2)})${average}`;
+      const average = dav.estimable ? html`; d<sub>av</sub> ${signedText(dav.estimate, 2)}` : null;
+      const range = intervalText(dz.interval, 2);
+      return html`d<sub>z</sub> ${signedText(dz.estimate, 2)} (${range})${average}`;
     }
     case 'fit-standardised-difference': {
       const { estimate, interval } = effectSizes.d;
-      return `d ${signedText(estimate, 2)} (${intervalText(interval, 2)})`;
+      return html`d ${signedText(estimate, 2)} (${intervalText(interval, 2)})`;
     }
     case 'rank-biserial':
-      return `r ${signedText(effectSizes.rankBiserial, 2)}`;
+      return html`rank-biserial ${signedText(effectSizes.rankBiserial, 2)}`;
   }
 }
 

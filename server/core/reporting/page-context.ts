@@ -47,9 +47,30 @@ export function derivedDecimals({ decimals, scale }: Measure): number {
   return scale === 'binary' ? 3 : decimals + 1;
 }
 
+/**
+ * Decimals of what is compared: as {@link derivedDecimals}, but a rate over a measured exposure,
+ * which is small where the exposure is large, has three more.
+ */
+export function responseDecimals(measure: Measure): number {
+  return derivedDecimals(measure) + (measure.exposure?.kind === 'measure' ? 3 : 0);
+}
+
+/** The unit of what is compared, after a space; nothing when it has none. */
+export function responseUnit({ unit, exposure }: Measure): string {
+  if (exposure?.kind === 'measure') return ' per unit of exposure';
+  return unit === null ? '' : ` ${unit}`;
+}
+
 /** `Pegboard time (s)`. */
 export function labelWithUnit({ label, unit }: Measure): string {
   return unit === null ? label : `${label} (${unit})`;
+}
+
+/** What an axis of cell summaries shows, with its unit. */
+export function responseLabel(measure: Measure): string {
+  if (measure.scale === 'binary') return `${measure.label}, share of yes`;
+  if (measure.exposure?.kind === 'measure') return `${measure.label}${responseUnit(measure)}`;
+  return labelWithUnit(measure);
 }
 
 /** What one number of a participant and condition is, in words. */

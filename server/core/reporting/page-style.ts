@@ -3,7 +3,7 @@ export const PAGE_STYLE = `
 :root { color-scheme: light; --ink: #23272b; --soft: #59636b; --line: #cfd6d3; --wash: #f3f5f2;
   --mark: #1d5c63; --warm: #9a4a12; }
 * { box-sizing: border-box; }
-body { margin: 0 auto; padding: 2rem 1.5rem 4rem; max-width: 62rem; color: var(--ink);
+body { margin: 0 auto; padding: 2rem 1.5rem 4rem; max-width: 68rem; color: var(--ink);
   background: #fff; font: 1rem/1.55 Georgia, "Times New Roman", serif; }
 h1, h2, h3, h4, th, caption, figcaption, svg text, .tag, nav, dt {
   font-family: "Helvetica Neue", Arial, sans-serif; }
@@ -23,12 +23,13 @@ code { font: .86em "DejaVu Sans Mono", Menlo, Consolas, monospace; }
 table { border-collapse: collapse; min-width: 26rem; font-size: .9rem; font-variant-numeric:
 tabular-nums; }
 caption { text-align: left; font-weight: 600; font-size: .92rem; padding-bottom: .45rem; }
-th, td { padding: .3rem .7rem; text-align: left; vertical-align: top;
+th, td { padding: .3rem .6rem; text-align: left; vertical-align: top;
   border-bottom: 1px solid var(--line); }
 thead th { border-bottom: 2px solid var(--soft); font-size: .82rem; vertical-align: bottom; }
-tbody th { font-weight: 500; font-size: .88rem; }
+tbody th { font-weight: 500; font-size: .88rem; min-width: 8.5rem; }
 td.phrase { white-space: nowrap; }
-th.number, td.number { text-align: right; white-space: nowrap; }
+th.number, td.number { text-align: right; }
+td.number, .heat th { white-space: nowrap; }
 .heat td { min-width: 4rem; text-align: center; border: 1px solid #fff; }
 .heat-0 { background: #f6f7f4; } .heat-1 { background: #dfe9e4; } .heat-2 { background: #c2d8d1; }
 .heat-3 { background: #9dc2bb; } .heat-4 { background: #75a9a4; } .heat-5 { background: #579490; }
@@ -55,6 +56,9 @@ svg text.axis { fill: var(--soft); }
   h2, h3, h4, caption { break-after: avoid; }
   table, figure, .finding { break-inside: avoid; }
   .table { overflow: visible; }
+  table { font-size: 8pt; }
+  th, td { padding: .15rem .35rem; }
+  tbody th { font-size: 8pt; min-width: 0; }
   .heat td { -webkit-print-color-adjust: exact; print-color-adjust: exact; }
 }
 `;

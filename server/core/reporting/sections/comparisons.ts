@@ -16,12 +16,12 @@ import {
   signedText,
 } from '../number-text.ts';
 import {
-  derivedDecimals,
   ESTIMATES,
   labelWithUnit,
   type MeasureOnPage,
   type PageContext,
   reasonCell,
+  responseDecimals,
   standingTag,
 } from '../page-context.ts';
 import { columns, table } from '../table.ts';
@@ -81,7 +81,7 @@ ${comparisonTable(set, measure, context)}`,
 
 function setText({ basis, multiplicity, familySize }: ComparisonSet): string {
   const family = countText(familySize, 'comparison');
-  return `Basis: ${BASES[basis]}. In all ${family}, p-values ${ADJUSTMENTS[multiplicity]}.`;
+  return `Basis: ${BASES[basis]}. In all ${family}; p-values ${ADJUSTMENTS[multiplicity]}.`;
 }
 
 /** The comparisons that were not named as primary, for comparison with those that were. */
@@ -109,7 +109,7 @@ function comparisonTable(set: ComparisonSet, measure: Measure, context: PageCont
     columns: [
       ...columns(['Comparison'], [kind, `${level} interval`, 'p', 'Adjusted p', 'Participants']),
       { heading: 'Statistic', kind: 'phrase' },
-      { heading: 'Effect size', kind: 'phrase' },
+      { heading: 'Effect size', kind: 'words' },
     ],
     rows: set.comparisons.map((entry): Content[] => {
       const pair = pairText(entry, context);
@@ -117,7 +117,7 @@ function comparisonTable(set: ComparisonSet, measure: Measure, context: PageCont
         return [pair, '–', '–', '–', '–', '–', reasonCell(entry), entry.detail];
       }
       const { estimate, interval, ratio } = entry;
-      const decimals = derivedDecimals(measure);
+      const decimals = responseDecimals(measure);
       const shown =
         ratio === null ? interval : ratio.estimable ? { ...ratio, ...ratio.interval } : ratio;
       return [
@@ -156,7 +156,7 @@ ${claimed.map(({ measure, result }) =>
 }
 
 function equivalenceTable(set: ComparisonSet, measure: Measure, context: PageContext): Markup {
-  const decimals = measure.scale === 'time-like' ? RATIO_DECIMALS : derivedDecimals(measure);
+  const decimals = measure.scale === 'time-like' ? RATIO_DECIMALS : responseDecimals(measure);
   return html`<h3>${labelWithUnit(measure)} ${standingTag(set.standing, set.use)}</h3>
 ${table({
   caption: `${measure.label}: two one-sided tests, ${ESTIMATES[set.estimate]}`,

@@ -9,6 +9,7 @@ import {
   labelWithUnit,
   type MeasureOnPage,
   type PageContext,
+  responseLabel,
   whyNot,
 } from '../page-context.ts';
 import { columns, table } from '../table.ts';
@@ -63,7 +64,7 @@ function intervalFigure({ measure, result }: MeasureOnPage, context: PageContext
       `(Morey 2008), of the ${cellSummaryText(cellSummary)} of each participant; ` +
       `${countText(intervals.participants, 'participant')} gave every condition. They show the ` +
       'pattern of the conditions; they are not intervals of a difference.',
-    axisLabel: axisLabel(measure, cellSummary),
+    axisLabel: responseLabel(measure),
     marks: intervals.conditions.map(({ condition, mean, interval }) => ({
       label: context.conditionLabel(condition),
       mean,
@@ -71,12 +72,6 @@ function intervalFigure({ measure, result }: MeasureOnPage, context: PageContext
       upper: interval.upper,
     })),
   });
-}
-
-function axisLabel(measure: Measure, summary: string): string {
-  if (summary === 'proportion') return `${measure.label}, share of yes`;
-  if (summary === 'rate') return `${measure.label}, per unit of exposure`;
-  return labelWithUnit(measure);
 }
 
 function summaryTable(
@@ -158,7 +153,7 @@ function cellsOfScale({ ofScale }: Summary, measure: Measure): string[] {
       return [
         numberText(rate.total, measure.decimals),
         `${Number(rate.exposure.toPrecision(8))} ${rate.exposureUnit ?? 'trials'}`,
-        numberText(rate.rate, derivedDecimals(measure) + 2),
+        numberText(rate.rate, derivedDecimals(measure) + 3),
       ];
     }
     case 'binary': {

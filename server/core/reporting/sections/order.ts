@@ -15,11 +15,13 @@ import {
 } from '../number-text.ts';
 import {
   cellSummaryText,
-  derivedDecimals,
   labelWithUnit,
   type MeasureOnPage,
   type PageContext,
   reasonCell,
+  responseDecimals,
+  responseLabel,
+  responseUnit,
   standingTag,
   whyNot,
 } from '../page-context.ts';
@@ -82,7 +84,7 @@ function fitPart(
   text: { readonly lead: string; readonly level: number },
 ): Markup {
   const back = isLogarithm ? Math.exp : (value: number): number => value;
-  const decimals = derivedDecimals(measure);
+  const decimals = responseDecimals(measure);
   const means = fit.periodMeans.flatMap((entry) => (entry.estimable ? [entry] : []));
   const word = isLogarithm ? 'geometric mean' : 'mean';
   const marks = means.map(({ period, mean, interval }) => ({
@@ -105,7 +107,7 @@ ${
           `Adjusted ${word} by period with ${percentText(text.level)} intervals, conditions ` +
           `weighted equally; ${countText(fit.participants, 'participant')}, ` +
           `${countText(fit.observations, 'observation')}.`,
-        axisLabel: labelWithUnit(measure),
+        axisLabel: responseLabel(measure),
         marks,
       })
 }
@@ -150,8 +152,8 @@ factor of
 ${factor} (interval ${ends}; ${pValuePhrase(pValue)}).</p>
 `;
   }
-  const decimals = derivedDecimals(measure) + 1;
-  const unit = measure.unit === null ? '' : ` ${measure.unit}`;
+  const decimals = responseDecimals(measure) + 1;
+  const unit = responseUnit(measure);
   return html`<p>Linear trend: from each period to the next, ${measure.label} changed by
 ${signedText(estimate, decimals)}${unit} (interval ${signedIntervalText(interval, decimals)};
 ${pValuePhrase(pValue)}).</p>
