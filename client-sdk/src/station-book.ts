@@ -96,12 +96,18 @@ export class StationBook {
   }
 
   /**
-   * Notes that a period begins, now. When the link is down, the start waits in the outbox.
+   * Notes that a period begins, now. When the link is down, the start waits in the outbox, and the
+   * station itself refuses a period that is not due by its book.
    *
-   * @throws {ProblemError} when the service refuses it; the book then forgets the start
+   * @throws {ProblemError} when it is refused, such as `period-not-due`; the book forgets the start
+   * @throws {NotInBookError} when the link is down and the participant is not in the book
    */
   async startPeriod(code: string, start: PeriodStartRequest): Promise<Delivery> {
     const startedAt = start.startedAt ?? new Date().toISOString();
+    const due = await this.due(code);
+    if (due.source === 'station' && start.deviation === undefined) {
+      requireDue(dueByBook(await this.#booked(code), new Date(startedAt)), start.period);
+    }
     const change = ({ starts, ...booked }: Booked): Booked => ({
       ...booked,
       starts: [
@@ -227,6 +233,19 @@ function dueByBook({ arrival, starts, withdrawn }: Booked, now: Date): BookedDue
     dueFrom: earliestMs === null ? null : new Date(earliestMs).toISOString(),
     dueUntil: latestMs === null ? null : new Date(latestMs).toISOString(),
   };
+}
+
+/** As the service would refuse it. */
+function requireDue(due: BookedDuePeriod, period: number): void {
+  if (due.state === 'due' && due.period === period) return;
+  const said = due.period === null ? 'no period is due' : `period ${due.period} is ${due.state}`;
+  throw new ProblemError({
+    type: '/problems/period-not-due',
+    title: 'This period is not due yet',
+    status: 409,
+    detail: `By the station's own book, ${said}; another start is a deviation and needs a reason.`,
+    instance: '/station-book',
+  });
 }
 
 function coreDue(

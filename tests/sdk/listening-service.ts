@@ -1,44 +1,27 @@
-import { pino } from 'pino';
-import { type Config, loadConfig } from '#platform/config.ts';
-import { type Database, openDatabase } from '#platform/database.ts';
-import { ensureFirstAdministrator } from '#server/access/service.ts';
-import { buildApp } from '#server/app.ts';
+import type { Database } from '#platform/database.ts';
 import { Fairturn } from '../../client-sdk/src/index.ts';
-import { cloneDatabase } from '../support/database.ts';
+import { startTestService } from '../support/app.ts';
 
 export interface ListeningService {
   readonly url: string;
   readonly database: Database;
+  readonly databaseUrl: string;
   readonly administratorToken: string;
   /** A client of the administrator. */
   readonly administrator: Fairturn;
   close(): Promise<void>;
 }
 
-/** The real service on a database of its own, listening on this machine. */
-export async function startListeningService(
-  changes: Partial<Config> = {},
-): Promise<ListeningService> {
-  const clone = await cloneDatabase();
-  const config = {
-    ...loadConfig({ DATABASE_URL: clone.url, FAIRTURN_RATE_LIMIT: '0' }),
-    ...changes,
-  };
-  const database = openDatabase({ url: clone.url, poolSize: 5 });
-  const first = await ensureFirstAdministrator(database);
-  if (first === null) throw new Error('The template has an administrator already.');
-  const app = await buildApp({ config, database, logger: pino({ level: 'silent' }) });
-  const url = await app.listen({ host: '127.0.0.1', port: 0 });
+/** The real service on a database of its own, listening on this machine, as clients meet it. */
+export async function startListeningService(): Promise<ListeningService> {
+  const service = await startTestService();
+  const url = await service.startInstance();
   return {
     url,
-    database,
-    administratorToken: first.token,
-    administrator: new Fairturn({ url, token: first.token }),
-    close: async () => {
-      app.server.closeAllConnections();
-      await app.close();
-      await database.close();
-      await clone.drop();
-    },
+    database: service.database,
+    databaseUrl: service.databaseUrl,
+    administratorToken: service.administrator,
+    administrator: new Fairturn({ url, token: service.administrator }),
+    close: () => service.close(),
   };
 }
