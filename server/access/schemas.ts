@@ -1,13 +1,17 @@
 import { z } from 'zod';
 import { ROLES } from '#platform/call.ts';
 import { PageQuery, pageOf } from '#platform/paging.ts';
+import { writtenText } from '#platform/text.ts';
 
-const Name = z.string().trim().min(1).max(120);
+const Name = writtenText(120);
 
-export const LabParams = z.strictObject({ labId: z.uuid() });
-export const SiteParams = z.strictObject({ siteId: z.uuid() });
-export const AccountParams = z.strictObject({ accountId: z.uuid() });
-export const TokenParams = z.strictObject({ tokenId: z.uuid() });
+/** In lower case, as ids are kept and compared. */
+const Id = z.uuid().toLowerCase();
+
+export const LabParams = z.strictObject({ labId: Id });
+export const SiteParams = z.strictObject({ siteId: Id });
+export const AccountParams = z.strictObject({ accountId: Id });
+export const TokenParams = z.strictObject({ tokenId: Id });
 
 export const CreateLabBody = z.strictObject({ name: Name }).meta({ id: 'CreateLabBody' });
 export type CreateLabBody = z.infer<typeof CreateLabBody>;
@@ -39,7 +43,7 @@ export const StationPage = pageOf(StationResponse).meta({ id: 'StationPage' });
 export const CreateAccountBody = z
   .strictObject({
     name: Name,
-    labId: z.uuid().nullable().describe('Null for people of the service itself'),
+    labId: Id.nullable().describe('Null for people of the service itself'),
   })
   .meta({ id: 'CreateAccountBody' });
 export type CreateAccountBody = z.infer<typeof CreateAccountBody>;
@@ -67,41 +71,41 @@ export const CreateTokenBody = z
   .discriminatedUnion('role', [
     z.strictObject({
       role: z.literal('administrator'),
-      accountId: z.uuid(),
+      accountId: Id,
       label: Name,
       lifetimeSeconds: Lifetime,
     }),
     z.strictObject({
       role: z.literal('study-lead'),
-      accountId: z.uuid(),
-      labId: z.uuid(),
+      accountId: Id,
+      labId: Id,
       label: Name,
       lifetimeSeconds: Lifetime,
     }),
     z.strictObject({
       role: z.literal('analyst'),
-      accountId: z.uuid(),
-      labId: z.uuid(),
+      accountId: Id,
+      labId: Id,
       label: Name,
       lifetimeSeconds: Lifetime,
     }),
     z.strictObject({
       role: z.literal('auditor'),
-      accountId: z.uuid(),
-      labId: z.uuid().nullable().describe('Null audits the whole service'),
+      accountId: Id,
+      labId: Id.nullable().describe('Null audits the whole service'),
       label: Name,
       lifetimeSeconds: Lifetime,
     }),
     z.strictObject({
       role: z.literal('site-coordinator'),
-      accountId: z.uuid(),
-      siteId: z.uuid(),
+      accountId: Id,
+      siteId: Id,
       label: Name,
       lifetimeSeconds: Lifetime,
     }),
     z.strictObject({
       role: z.literal('station'),
-      stationId: z.uuid(),
+      stationId: Id,
       label: Name,
       lifetimeSeconds: Lifetime,
     }),
@@ -139,5 +143,5 @@ export type CreatedTokenResponse = z.infer<typeof CreatedTokenResponse>;
 
 export const SiteListQuery = z.strictObject({
   ...PageQuery.shape,
-  labId: z.uuid().optional(),
+  labId: Id.optional(),
 });

@@ -4,7 +4,7 @@ import { pageOf } from '#platform/paging.ts';
 export const ADMINISTRATION_CHAIN = 'administration';
 
 export const ChainName = z
-  .union([z.literal(ADMINISTRATION_CHAIN), z.uuid()])
+  .union([z.literal(ADMINISTRATION_CHAIN), z.uuid().toLowerCase()])
   .describe('`administration`, or the id of a study');
 
 export const ChainParams = z.strictObject({ chain: ChainName });

@@ -58,6 +58,18 @@ describe('labs, sites, stations', () => {
     expect(pointers.sort()).toEqual(['/nam', '/name']);
   });
 
+  it('refuse text that cannot be stored, and take ids in either case', async () => {
+    const key = { 'idempotency-key': 'half-a-pair' };
+    const broken = await administrator().post('/v1/labs', { name: 'Lab \ud800' }, key);
+    expect(broken.status).toBe(400);
+    expect(broken.body.faults[0].pointer).toBe('/name');
+    const lab = await newLab('Either case');
+    const lead = service.as((await newLead(lab)).token);
+    const site = await lead.post(`/v1/labs/${lab.toUpperCase()}/sites`, { name: 'Quay' });
+    expect(site.status).toBe(201);
+    expect(site.body.labId).toBe(lab);
+  });
+
   it('come in pages that together hold each once', async () => {
     const lab = await newLab('Paged lab');
     for (let i = 0; i < 7; i += 1) {
