@@ -25,13 +25,32 @@ export async function registerOpenApi(app: FastifyInstance): Promise<void> {
       security: [{ token: [] }],
     },
     transform: (route) => {
-      const { schema, url } = jsonSchemaTransform(route);
+      const { schema, url } = describedBody(route);
       const open = route.route.config?.open === true;
       if (open) return { schema: { ...schema, hide: true }, url };
       return { schema: route.route.method === 'GET' ? schema : withHeaders(schema), url };
     },
     transformObject: (input) => withoutUnusedSchemas(jsonSchemaTransformObject(input)),
   });
+}
+
+type RouteToDescribe = Parameters<typeof jsonSchemaTransform>[0];
+type DescribedRoute = ReturnType<typeof jsonSchemaTransform>;
+
+/** A body of several media types is described type by type: the provider knows only one schema. */
+function describedBody(route: RouteToDescribe): DescribedRoute {
+  const { body, ...rest } = route.schema ?? {};
+  if (typeof body !== 'object' || body === null || !('content' in body)) {
+    return jsonSchemaTransform(route);
+  }
+  const described = Object.entries(body.content as Record<string, { schema: unknown }>).map(
+    ([mediaType, { schema }]) => {
+      const one = jsonSchemaTransform({ ...route, schema: { body: schema } });
+      return [mediaType, { schema: one.schema.body }];
+    },
+  );
+  const { schema, url } = jsonSchemaTransform({ ...route, schema: rest });
+  return { schema: { ...schema, body: { content: Object.fromEntries(described) } }, url };
 }
 
 /** Names the headers that the guard reads from every request that changes something. */
