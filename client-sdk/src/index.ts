@@ -39,3 +39,5 @@ export {
 } from './station-book.ts';
 export { Studies } from './studies.ts';
 export { Study } from './study.ts';
+export { ExportCutError, type ExportOptions } from './trial-export.ts';
+export type { UploadOptions, UploadOutcome, UploadProgress } from './uploads.ts';

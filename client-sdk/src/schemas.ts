@@ -49,17 +49,13 @@ export type Verification = Schemas['Verification'];
 export type AuditPublicKey = Schemas['AuditPublicKey'];
 
 /** One trial as a station reports it; `values` and `missing` are by measure key. */
-export interface TrialRow {
-  readonly participant: string;
-  readonly period: number;
-  readonly repetition: number;
-  /** Key of the condition as presented, whatever was assigned. */
-  readonly condition: string;
-  readonly recordId: string;
-  readonly values: Readonly<Record<string, number | boolean | null>>;
-  /** Why a value is missing. */
-  readonly missing?: Readonly<Record<string, string>>;
-  readonly startedAt: string;
-  readonly endedAt?: string;
-  readonly note?: string;
-}
+export type TrialRow = Schemas['TrialRow'];
+export type Upload = Schemas['Upload'];
+export type UploadSummary = Schemas['UploadSummary'];
+export type UploadFault = Schemas['UploadFault'];
+export type RefusedRow = Schemas['RefusedRow'];
+export type TrialCorrectionRequest = Schemas['TrialCorrectionBody'];
+export type TrialCorrection = Schemas['TrialCorrection'];
+export type ExportedTrial = Schemas['ExportedTrial'];
+export type ErasureRequest = Schemas['ErasureBody'];
+export type Erasure = Schemas['Erasure'];

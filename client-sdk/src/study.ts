@@ -4,6 +4,8 @@ import { Pages } from './pages.ts';
 import { pageQuery } from './places.ts';
 import { isProblem } from './problems.ts';
 import type * as shapes from './schemas.ts';
+import { type ExportOptions, exportedTrials, exportStream } from './trial-export.ts';
+import { type UploadOptions, type UploadOutcome, uploadRows } from './uploads.ts';
 
 /**
  * One study. Whatever it does is bounded by the token's role and place: a lead registers and
@@ -171,6 +173,65 @@ export class Study {
   replayAllocations(): Promise<shapes.AllocationReplay> {
     const path = '/v1/studies/{studyId}/replays';
     return answered(this.#api.POST(path, { params: this.#params }));
+  }
+
+  // ---- trials
+
+  /**
+   * Uploads trials from any source, once each: rows that are there already with the same values are
+   * counted as repeated.
+   *
+   * @throws {ProblemError} `upload-refused` when it is all or nothing and a row has a fault
+   */
+  upload(
+    rows: Iterable<shapes.TrialRow> | AsyncIterable<shapes.TrialRow>,
+    options: UploadOptions = {},
+  ): Promise<UploadOutcome> {
+    return uploadRows(this.#connection, this.id, rows, options);
+  }
+
+  uploads(): Pages<shapes.UploadSummary> {
+    const path = '/v1/studies/{studyId}/uploads';
+    return new Pages((cursor) =>
+      answered(this.#api.GET(path, { params: { ...this.#params, query: pageQuery(cursor) } })),
+    );
+  }
+
+  /** What became of one upload. */
+  uploaded(uploadId: string): Promise<shapes.Upload> {
+    const path = '/v1/studies/{studyId}/uploads/{uploadId}';
+    return answered(this.#api.GET(path, { params: { path: { studyId: this.id, uploadId } } }));
+  }
+
+  /** The rows of an upload that were refused, as they came, each with its faults. */
+  refusedRows(uploadId: string): Pages<shapes.RefusedRow> {
+    const path = '/v1/studies/{studyId}/uploads/{uploadId}/refused-rows';
+    return new Pages((cursor) => {
+      const params = { path: { studyId: this.id, uploadId }, query: pageQuery(cursor) };
+      return answered(this.#api.GET(path, { params }));
+    });
+  }
+
+  /** Corrects a stored trial; the original stays beside the correction. */
+  correctTrial(correction: shapes.TrialCorrectionRequest): Promise<shapes.TrialCorrection> {
+    const path = '/v1/studies/{studyId}/trial-corrections';
+    return answered(this.#api.POST(path, { params: this.#params, body: correction }));
+  }
+
+  /** The study's trials as they come from the service. An export is a look: logged and counted. */
+  exportTrials(options: ExportOptions = {}): AsyncGenerator<shapes.ExportedTrial, void, undefined> {
+    return exportedTrials(this.#connection, this.id, options);
+  }
+
+  /** The same as one CSV text stream (RFC 4180). */
+  exportCsv(options: ExportOptions = {}): Promise<ReadableStream<Uint8Array>> {
+    return exportStream(this.#connection, this.id, { ...options, mediaType: 'text/csv' });
+  }
+
+  /** Erases a participant's code and contents for good; a tombstone stays. */
+  eraseParticipant(code: string, erasure: shapes.ErasureRequest): Promise<shapes.Erasure> {
+    const path = '/v1/studies/{studyId}/participants/{code}/erasure';
+    return answered(this.#api.POST(path, { params: this.#participant(code), body: erasure }));
   }
 
   // ---- analyses and reports

@@ -1,6 +1,6 @@
 import type { Connection } from './connection.ts';
-import { type Fault, ProblemError } from './problems.ts';
-import type { TrialRow, Upload } from './schemas.ts';
+import { ProblemError } from './problems.ts';
+import type { TrialRow, Upload, UploadFault } from './schemas.ts';
 
 export interface UploadOptions {
   /**
@@ -37,7 +37,7 @@ export interface UploadOutcome {
   /** Rows whose condition is not the assigned one, stored and flagged. */
   readonly deviations: number;
   /** Rows are counted over the whole upload, from 1. */
-  readonly faults: readonly Fault[];
+  readonly faults: readonly UploadFault[];
 }
 
 const DEFAULT_BATCH_ROWS = 2000;
@@ -76,21 +76,24 @@ async function sendBatch(
   try {
     const headers = { 'content-type': 'application/x-ndjson' };
     const response = await connection.send({ method: 'POST', headers, ...request });
-    return shifted((await response.json()) as Upload, rowsBefore);
+    const upload = (await response.json()) as Upload;
+    return { ...upload, faults: shifted(upload.faults, rowsBefore) };
   } catch (error) {
-    throw error instanceof ProblemError && rowsBefore > 0
-      ? new ProblemError(shifted(error.toProblem(), rowsBefore))
-      : error;
+    if (!(error instanceof ProblemError)) throw error;
+    const problem = error.toProblem();
+    const faults = shifted(problem.faults ?? [], rowsBefore);
+    throw new ProblemError(faults.length > 0 ? { ...problem, faults } : problem);
   }
 }
 
-/** The same, with the rows of its faults counted over the whole upload. */
-function shifted<Part extends { faults?: Fault[] }>(part: Part, rowsBefore: number): Part {
-  if (part.faults === undefined || rowsBefore === 0) return part;
-  const faults = part.faults.map((fault) =>
+/** Faults of a batch, with their rows counted over the whole upload. */
+function shifted<Fault extends { readonly row?: number }>(
+  faults: readonly Fault[],
+  rowsBefore: number,
+): Fault[] {
+  return faults.map((fault) =>
     fault.row === undefined ? fault : { ...fault, row: fault.row + rowsBefore },
   );
-  return { ...part, faults };
 }
 
 async function* batchesOf(

@@ -733,6 +733,102 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/v1/studies/{studyId}/uploads": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["listUploads"];
+        put?: never;
+        post: operations["uploadTrials"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/uploads/{uploadId}": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["getUpload"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/uploads/{uploadId}/refused-rows": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["listRefusedRows"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/trial-corrections": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["correctTrial"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/trials": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get: operations["exportTrials"];
+        put?: never;
+        post?: never;
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
+    "/v1/studies/{studyId}/participants/{code}/erasure": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        post: operations["eraseParticipant"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
 }
 export type webhooks = Record<string, never>;
 export interface components {
@@ -1043,6 +1139,19 @@ export interface components {
             /** Format: date-time */
             judgedAt: string;
         };
+        Erasure: {
+            /**
+             * Format: uuid
+             * @description Of the tombstone, by which the log goes on naming it
+             */
+            participantId: string;
+            /** Format: date-time */
+            erasedAt: string;
+        };
+        ErasureBody: {
+            /** @enum {string} */
+            reasonCode: "participant-request" | "consent-withdrawn" | "retention-ended" | "collected-by-mistake" | "legal-duty";
+        };
         ExclusionRule: {
             /** @constant */
             kind: "range";
@@ -1060,6 +1169,44 @@ export interface components {
             /** @constant */
             kind: "incomplete-participant";
             minimumPeriods: number;
+        };
+        ExportedTrial: {
+            /** @description Code; null for one who was erased or voided */
+            participant: string | null;
+            period: number;
+            repetition: number;
+            /** @description As presented */
+            condition: string;
+            recordId: string | null;
+            startedAt: string | null;
+            endedAt: string | null;
+            note: string | null;
+            values: {
+                [key: string]: number | boolean;
+            };
+            missing: {
+                [key: string]: string;
+            };
+            /** Format: uuid */
+            trialId: string;
+            /** Format: uuid */
+            participantId: string;
+            /** Format: uuid */
+            siteId: string;
+            stratum: string;
+            slotNumber: number;
+            protocolVersion: number;
+            assignedCondition: string;
+            deviation: boolean;
+            flags: string[];
+            version: number;
+            current: boolean;
+            /** @description The participant was erased: the record stays as a tombstone */
+            erased: boolean;
+            /** @description Null for a correction */
+            uploadId: string | null;
+            /** Format: date-time */
+            receivedAt: string;
         };
         /** @description What a count is out of or over */
         Exposure: {
@@ -1346,6 +1493,17 @@ export interface components {
             engineVersion: string;
             filedEngineVersion: string;
         };
+        RefusedRow: {
+            /** @description Of the data, from 1 */
+            row: number;
+            /** @description As it came; null once its participant was erased */
+            raw: string | null;
+            faults: components["schemas"]["RowFault"][];
+        };
+        RefusedRowPage: {
+            items: components["schemas"]["RefusedRow"][];
+            nextCursor: string | null;
+        };
         RegisterProtocolBody: {
             /** @description The revision of the draft that is to be registered */
             revision: number;
@@ -1427,6 +1585,11 @@ export interface components {
             accountId: string | null;
             stationId: string | null;
             operator: string | null;
+        };
+        RowFault: {
+            pointer: string;
+            code: string;
+            message: string;
         };
         /** @description Where the sequences come from */
         SchemeChoice: {
@@ -1570,6 +1733,156 @@ export interface components {
         TokenPage: {
             items: components["schemas"]["Token"][];
             nextCursor: string | null;
+        };
+        TrialCorrection: {
+            /**
+             * Format: uuid
+             * @description Of the new version of the trial
+             */
+            id: string;
+            /** Format: uuid */
+            participantId: string;
+            period: number;
+            repetition: number;
+            /** @description From 1; earlier versions stay */
+            version: number;
+            condition: string;
+            deviation: boolean;
+            flags: string[];
+            /** @description Salted, to the corrected content */
+            commitment: string;
+            /** Format: date-time */
+            correctedAt: string;
+        };
+        TrialCorrectionBody: {
+            /** @description Code of the participant */
+            participant: string;
+            period: number;
+            repetition: number;
+            /** @description All values of the record as it should be */
+            values: {
+                [key: string]: number | boolean | null;
+            };
+            /** @description All reasons for missing values as they should be */
+            missing?: {
+                [key: string]: string;
+            };
+            /** @description As it was when absent */
+            condition?: string;
+            /**
+             * Format: date-time
+             * @description As it was when absent
+             */
+            startedAt?: string;
+            /** @description As it was when absent */
+            endedAt?: string | null;
+            /** @description As it was when absent */
+            note?: string | null;
+            reason: string;
+        };
+        /** @description One trial record. Every measure of the protocol that is taken on this repetition has a value or a reason why it is missing. */
+        TrialRow: {
+            /** @description Code of the participant; case is ignored */
+            participant: string;
+            /** @description From 1 */
+            period: number;
+            /** @description From 1 in the period */
+            repetition: number;
+            /** @description Key of the condition as presented */
+            condition: string;
+            /** @description Of the sender; unique in the study */
+            recordId: string;
+            /** @description By measure key: a number, for binary measures true, false, 1 or 0; null is not given */
+            values?: {
+                [key: string]: number | boolean | null;
+            };
+            /** @description Reason code by measure key, for each value that is not given: not-taken, equipment … */
+            missing?: {
+                [key: string]: string;
+            };
+            /**
+             * Format: date-time
+             * @description ISO 8601 with the offset from UTC; kept as it comes
+             */
+            startedAt: string;
+            endedAt?: string | null;
+            note?: string | null;
+        };
+        Upload: {
+            /** Format: uuid */
+            id: string;
+            /** Format: uuid */
+            studyId: string;
+            /** Format: uuid */
+            siteId: string;
+            operator: string | null;
+            /** @enum {string} */
+            acceptance: "all-or-nothing" | "valid-rows";
+            mediaType: string;
+            /** @description Of the bytes received; null once a participant of the study was erased */
+            sha256: string | null;
+            /** Format: date-time */
+            receivedAt: string;
+            /**
+             * @description refused: all-or-nothing, and there were faults; only the refused rows are kept
+             * @enum {string}
+             */
+            outcome: "stored" | "refused";
+            rows: number;
+            /** @description Stored by this upload */
+            accepted: number;
+            /** @description Stored already, with the same content */
+            repeated: number;
+            refused: number;
+            /** @description Stored by this upload, and implausible */
+            flagged: number;
+            /** @description Stored by this upload under another condition than assigned */
+            deviations: number;
+            /** @description Of the first refused rows; see refused-rows for all */
+            faults: components["schemas"]["UploadFault"][];
+        };
+        UploadFault: {
+            /** @description Of the data, from 1 */
+            row: number;
+            /** @description JSON pointer (RFC 6901) into the row, as a TrialRow */
+            pointer: string;
+            code: string;
+            message: string;
+        };
+        UploadPage: {
+            items: components["schemas"]["UploadSummary"][];
+            nextCursor: string | null;
+        };
+        UploadSummary: {
+            /** Format: uuid */
+            id: string;
+            /** Format: uuid */
+            studyId: string;
+            /** Format: uuid */
+            siteId: string;
+            operator: string | null;
+            /** @enum {string} */
+            acceptance: "all-or-nothing" | "valid-rows";
+            mediaType: string;
+            /** @description Of the bytes received; null once a participant of the study was erased */
+            sha256: string | null;
+            /** Format: date-time */
+            receivedAt: string;
+            /**
+             * @description refused: all-or-nothing, and there were faults; only the refused rows are kept
+             * @enum {string}
+             */
+            outcome: "stored" | "refused";
+            rows: number;
+            /** @description Stored by this upload */
+            accepted: number;
+            /** @description Stored already, with the same content */
+            repeated: number;
+            refused: number;
+            /** @description Stored by this upload, and implausible */
+            flagged: number;
+            /** @description Stored by this upload under another condition than assigned */
+            deviations: number;
         };
         Verification: {
             intact: boolean;
@@ -3423,6 +3736,269 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["Recomputation"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    listUploads: {
+        parameters: {
+            query?: {
+                limit?: number;
+                cursor?: string;
+            };
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["UploadPage"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    uploadTrials: {
+        parameters: {
+            query?: {
+                /** @description What becomes of the rows without fault when others have faults */
+                acceptance?: "all-or-nothing" | "valid-rows";
+            };
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["TrialRow"][];
+                "application/x-ndjson": string;
+                "text/csv": string;
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Upload"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    getUpload: {
+        parameters: {
+            query?: never;
+            header?: never;
+            path: {
+                studyId: string;
+                uploadId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Upload"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    listRefusedRows: {
+        parameters: {
+            query?: {
+                limit?: number;
+                cursor?: string;
+            };
+            header?: never;
+            path: {
+                studyId: string;
+                uploadId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["RefusedRowPage"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    correctTrial: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["TrialCorrectionBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            201: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["TrialCorrection"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    exportTrials: {
+        parameters: {
+            query?: {
+                /** @description all: with the versions that were corrected since */
+                versions?: "current" | "all";
+            };
+            header?: never;
+            path: {
+                studyId: string;
+            };
+            cookie?: never;
+        };
+        requestBody?: never;
+        responses: {
+            /** @description x */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/x-ndjson": components["schemas"]["ExportedTrial"];
+                    "text/csv": string;
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    eraseParticipant: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path: {
+                studyId: string;
+                /** @description Code or id of the participant */
+                code: string;
+            };
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["ErasureBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["Erasure"];
                 };
             };
             /** @description Problem details (RFC 9457) */
