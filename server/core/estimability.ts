@@ -14,6 +14,7 @@
  * - `undefined-correction`: the formula's denominator is zero within rounding
  * - `all-differences-zero`, `all-values-tied`
  * - `non-positive-value`: a logarithm is needed and a value is zero or below
+ * - `out-of-range`: a value, setting or result lies beyond what the arithmetic can carry
  * - `attainable-confidence-too-low`: so few pairs that no interval reaches the level asked for
  */
 export type NotEstimableReason =
@@ -34,6 +35,7 @@ export type NotEstimableReason =
   | 'all-differences-zero'
   | 'all-values-tied'
   | 'non-positive-value'
+  | 'out-of-range'
   | 'attainable-confidence-too-low';
 
 /** Stands where a number cannot: says why, in a code for programs and a sentence for people. */

@@ -55,6 +55,8 @@ orderFit <- function(data) {
   }
   differences <- as.data.frame(summary(pairs(emmeans(fit, "condition"), adjust = "none"),
                                        infer = c(TRUE, TRUE)))
+  effect <- as.data.frame(confint(eff_size(emmeans(fit, "condition"), sigma = sqrt(2) * sigma(fit),
+                                           edf = df.residual(fit))))
   k <- nlevels(data$period); scores <- seq_len(k) - mean(seq_len(k))
   trend <- as.data.frame(summary(contrast(emmeans(fit, "period"),
     list(linear = scores / sum(scores^2))), infer = c(TRUE, TRUE)))
@@ -64,6 +66,7 @@ orderFit <- function(data) {
        conditions = means("condition"), periods = means("period"),
        differences = list(contrast = differences$contrast, estimate = differences$estimate,
          se = differences$SE, lower = differences$lower.CL, upper = differences$upper.CL,
+         d = effect$effect.size, dLower = effect$lower.CL, dUpper = effect$upper.CL,
          p = differences$p.value, holm = p.adjust(differences$p.value, "holm")),
        trend = list(estimate = trend$estimate, se = trend$SE, p = trend$p.value))
 }

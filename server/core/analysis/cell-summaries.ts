@@ -1,6 +1,7 @@
-import type { NotEstimable } from '../estimability.ts';
+import { type NotEstimable, notEstimable } from '../estimability.ts';
 import { logValues } from '../inference/log-scale.ts';
 import type { PeriodObservations } from '../models/period-adjusted-types.ts';
+import { MAGNITUDE_MAX } from '../numerics/magnitude.ts';
 import type { Measure } from '../protocol/protocol.ts';
 import type { AnalysisData, AnalysisParticipant, AnalysisTrial } from './analysis-data.ts';
 import { median } from './quantiles.ts';
@@ -91,18 +92,30 @@ export function rankCellSummaryOf(measure: Measure): CellSummary {
 }
 
 /**
- * Why the logarithms that a summary needs cannot be had; null when they can. One value at or below
- * zero is enough: leaving such values out would be an exclusion that nobody registered.
+ * Why a measure's values cannot be summarised; null when they can: one is beyond 1e100 in size, or
+ * its rate is, or it has no logarithm where the summary needs one. A single such value is enough:
+ * leaving it out would be an exclusion that nobody registered.
  */
-export function logarithmFault(
+export function valuesFault(
   participants: readonly ParticipantValues[],
   summary: CellSummary,
 ): NotEstimable | null {
-  if (summary !== 'mean-logarithm') return null;
-  const logarithms = logValues(
-    participants.flatMap(({ values }) => values.map(({ value }) => value)),
-  );
+  const values = participants.flatMap((participant) => participant.values);
+  const tooLarge = rangeFault(values);
+  if (tooLarge !== null || summary !== 'mean-logarithm') return tooLarge;
+  const logarithms = logValues(values.map(({ value }) => value));
   return logarithms.estimable ? null : logarithms;
+}
+
+/** Why values cannot be squared and added up: one, or its rate, is beyond 1e100 in size. */
+export function rangeFault(values: readonly MeasureValue[]): NotEstimable | null {
+  const isTooLarge = ({ value, exposure }: MeasureValue): boolean =>
+    Math.abs(value) > MAGNITUDE_MAX ||
+    (exposure !== null && (exposure > MAGNITUDE_MAX || Math.abs(value) > MAGNITUDE_MAX * exposure));
+  const count = values.filter(isTooLarge).length;
+  if (count === 0) return null;
+  const detail = `${count} of ${values.length} values are beyond 1e100 in size.`;
+  return notEstimable('out-of-range', detail);
 }
 
 /**

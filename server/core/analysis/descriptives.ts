@@ -7,11 +7,12 @@ import type { AnalysisData } from './analysis-data.ts';
 import {
   cellSummaryOf,
   conditionRows,
-  logarithmFault,
   type MeasureValue,
   meanOf,
   type ParticipantValues,
+  rangeFault,
   rateOf,
+  valuesFault,
 } from './cell-summaries.ts';
 import type { Descriptives, Distribution, ScaleSummary, Summary } from './descriptive-types.ts';
 import { quantile } from './quantiles.ts';
@@ -77,13 +78,16 @@ function gather(participants: readonly ParticipantValues[]): LocatedValue[] {
 }
 
 function summaryOf(values: readonly LocatedValue[], measure: Measure, level: number): Summary {
+  const fault = rangeFault(values);
   return {
     participants: new Set(values.map(({ participantId }) => participantId)).size,
     trials: values.length,
     distribution:
-      values.length === 0
-        ? notEstimable('too-few-observations', 'There is no value.')
-        : { estimable: true, ...distributionOf(values.map(({ value }) => value)) },
+      fault !== null
+        ? fault
+        : values.length === 0
+          ? notEstimable('too-few-observations', 'There is no value.')
+          : { estimable: true, ...distributionOf(values.map(({ value }) => value)) },
     ofScale: scaleSummary(values, measure, level),
   };
 }
@@ -147,6 +151,8 @@ function countRate(
   values: readonly LocatedValue[],
   { exposure }: Measure,
 ): Extract<ScaleSummary, { scale: 'count' }>['rate'] {
+  const fault = rangeFault(values);
+  if (fault !== null) return fault;
   // A count without a registered exposure is a count a trial.
   const exposed = exposure === null ? values.map((value) => ({ ...value, exposure: 1 })) : values;
   const rate = rateOf(exposed);
@@ -165,7 +171,7 @@ function intervals(
   level: number,
 ): Descriptives['withinParticipantIntervals'] {
   const cellSummary = cellSummaryOf(measure);
-  const fault = logarithmFault(participants, cellSummary);
+  const fault = valuesFault(participants, cellSummary);
   if (fault !== null) return { cellSummary, level, intervals: fault };
   const rows = conditionRows(participants, conditions, cellSummary).flatMap(({ cells }) => {
     const complete = cells.filter((cell) => cell !== null);
@@ -179,6 +185,10 @@ function intervals(
   const found = withinParticipantIntervals(matrixFromRows(rows), level);
   if (!found.estimable) return { cellSummary, level, intervals: found };
   const back = cellSummary === 'mean-logarithm' ? Math.exp : (value: number): number => value;
+  if (found.conditions.some(({ interval }) => !Number.isFinite(back(interval.upper)))) {
+    const detail = 'An end of an interval is too large to be carried back from logarithms.';
+    return { cellSummary, level, intervals: notEstimable('out-of-range', detail) };
+  }
   return {
     cellSummary,
     level,

@@ -2,7 +2,7 @@ import { periodAdjustedFit } from '../models/period-adjusted-fit.ts';
 import type { ConditionFit } from '../models/period-adjusted-types.ts';
 import type { Measure, Protocol } from '../protocol/protocol.ts';
 import { type AnalysisData, analysisData } from './analysis-data.ts';
-import { cellSummaryOf, logarithmFault, periodObservations, valuesOf } from './cell-summaries.ts';
+import { cellSummaryOf, periodObservations, valuesFault, valuesOf } from './cell-summaries.ts';
 import { descriptives } from './descriptives.ts';
 import { applyExclusions } from './exclusions.ts';
 import { METHODS } from './methods/registry.ts';
@@ -75,7 +75,7 @@ function measureResult(data: AnalysisData, measure: Measure, seed: string): Meas
   const fitSummary = cellSummaryOf(measure);
   const conditionKeys = conditions.map(({ key }) => key);
   const fit: ConditionFit =
-    logarithmFault(participants, fitSummary) ??
+    valuesFault(participants, fitSummary) ??
     periodAdjustedFit(
       periodObservations(participants, conditionKeys, protocol.periods.count, fitSummary),
       { confidenceLevel: level },

@@ -1,7 +1,7 @@
 import { DomainError } from '../errors.ts';
 
 /** Squares and their sums stay far from overflow below this; no measure of people comes near. */
-const MAGNITUDE_MAX = 1e100;
+export const MAGNITUDE_MAX = 1e100;
 
 /** Rounding of a mean or contrast, relative to the largest value: 64 units in the last place. */
 const ROUNDING_RELATIVE = 2 ** -46;

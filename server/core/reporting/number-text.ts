@@ -4,11 +4,13 @@ import type { ConfidenceInterval } from '../estimability.ts';
 const PLAIN_MAX = 1e9;
 
 /**
- * A number with a fixed number of decimals, a true minus sign, and no minus on a rounded zero.
+ * A number with a fixed number of decimals, a true minus sign, and no minus on a rounded zero; what
+ * carrying back from logarithms made infinite is `∞`.
  *
  * @param decimals 0 to 20
  */
 export function numberText(value: number, decimals: number): string {
+  if (!Number.isFinite(value)) return value > 0 ? '∞' : '−∞';
   const text = Math.abs(value) < PLAIN_MAX ? Math.abs(value).toFixed(decimals) : exponential(value);
   return value < 0 && /[1-9]/.test(text) ? `−${text}` : text;
 }

@@ -259,13 +259,29 @@ describe('runPlan on data that cannot answer', () => {
     expect(new Set(reasons(snapshotOfRows(rows), 'time'))).toEqual(new Set(['non-positive-value']));
   });
 
+  it('carries no value too large to be squared, and no interval too wide for a ratio', () => {
+    const vast = mixedRows(4, (person, condition, period) => ({
+      ...mixedValues(person, condition, period),
+      ...(person === 2 && condition === 1 ? { force: 1e300, drops: 5, pegs: 1e-300 } : {}),
+    }));
+    expect(new Set(reasons(snapshotOfRows(vast)))).toEqual(new Set(['out-of-range']));
+    const spread = mixedRows(2, (person, condition) => ({
+      ...mixedValues(person, condition, 0),
+      time: [1e-60, 1, 1e60][(person + condition * (person + 1)) % 3]!,
+    }));
+    const { text } = wholeReport({ ...protocol, exclusions: [] }, snapshotOfRows(spread));
+    expect(text).toContain('too far from 1 to be carried back');
+  });
+
   it('keeps the family as large as planned when a comparison is missing', () => {
     const rows = mixedRows(9, (person, condition, period) => ({
       ...mixedValues(person, condition, period),
-      ...(condition === 2 ? { drops: null } : {}),
+      ...(condition === 2 ? { drops: null, time: null } : {}),
     }));
-    const drops = treeOf(protocol, snapshotOfRows(rows)).measures[2]!;
-    for (const set of drops.method!.comparisonSets) {
+    const { measures } = treeOf(protocol, snapshotOfRows(rows));
+    // By Holm for the one, by Bonferroni for the other: the smallest of three p-values, three times.
+    const [time, , drops] = measures;
+    for (const set of [time!, drops!].flatMap(({ method }) => method!.comparisonSets)) {
       const [first, ...others] = set.comparisons;
       expect(others.map(({ estimable }) => estimable)).toEqual([false, false]);
       if (first?.estimable !== true) throw new Error('bare and thin were both measured');
@@ -279,6 +295,7 @@ describe('runPlan on data that cannot answer', () => {
       fc.constant('none' as const),
       fc.constant('zero' as const),
       fc.constant('same' as const),
+      fc.constant('huge' as const),
     );
     const presence = fc.array(value, { minLength: 3, maxLength: 3 });
     fc.assert(
@@ -290,6 +307,8 @@ describe('runPlan on data that cannot answer', () => {
               return Object.fromEntries(Object.keys(usual).map((key) => [key, null]));
             case 'zero':
               return { ...usual, time: 0, force: 0, drops: 0, pegs: 0 };
+            case 'huge':
+              return { ...usual, time: 1e99, force: 1e200, drops: 1e250, pegs: 1e-250 };
             case 'same':
               return { time: 1, force: 1, drops: 1, pegs: 1, seated: true, comfort: 1 };
             default:

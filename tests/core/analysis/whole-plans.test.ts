@@ -106,6 +106,11 @@ function expectAdjusted(set: ComparisonSet, expected: Analysis['order']['differe
     near(estimated(rest.interval).lower, expected.lower[index]!, `${pair} lower`);
     near(pValue, expected.p[index]!, `${pair} p`);
     near(adjustedPValue, expected.holm[index]!, `${pair} Holm`);
+    if (rest.effectSizes.kind !== 'fit-standardised-difference') throw new Error('another size');
+    const { d } = rest.effectSizes;
+    near(d.estimate, expected.d[index]!, `${pair} d`);
+    near(d.interval.lower, expected.dLower[index]!, `${pair} d, lower`);
+    near(d.interval.upper, expected.dUpper[index]!, `${pair} d, upper`);
   });
 }
 

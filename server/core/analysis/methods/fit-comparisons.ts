@@ -84,8 +84,8 @@ function contrastOf(
 /**
  * An adjusted difference over √2 · the residual standard deviation, which is the standard deviation
  * of a difference of two conditions within a participant under the fit. Interval by the delta
- * method: var(d) ≈ var(difference)/s² + d²/(2ν), ν the residual degrees of freedom. From memory;
- * the same expansion as behind the large-sample interval of dz.
+ * method: var(d) ≈ var(difference)/s² + d²/(2ν), ν the residual degrees of freedom. This is
+ * what R's emmeans::eff_size computes, which the tests hold it to.
  */
 function fitStandardisedDifference(
   { estimate, standardError, degreesOfFreedom }: ContrastEstimate,

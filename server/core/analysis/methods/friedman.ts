@@ -4,7 +4,7 @@ import type { Measure } from '../../protocol/protocol.ts';
 import { friedmanTest } from '../../ranks/friedman.ts';
 import type { FriedmanTest } from '../../ranks/rank-types.ts';
 import { signedRankTest } from '../../ranks/signed-rank.ts';
-import { type ConditionRow, logarithmFault, rankCellSummaryOf } from '../cell-summaries.ts';
+import { type ConditionRow, rankCellSummaryOf, valuesFault } from '../cell-summaries.ts';
 import {
   type ComparedPair,
   comparedPairs,
@@ -28,7 +28,7 @@ export const friedman: Method & { readonly key: 'friedman' } = {
   run: (input): FriedmanResult => {
     const { data, measure, plan, standing } = input;
     const summary = rankCellSummaryOf(measure);
-    const fault = logarithmFault(input.participants, summary);
+    const fault = valuesFault(input.participants, summary);
     const usable = fault === null ? input : { ...input, participants: [] };
     const { rows, complete, leftOut } = completeRows(usable, summary, (cell) =>
       withoutRoundingNoise(cell, measure, summary),

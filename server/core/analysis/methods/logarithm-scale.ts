@@ -1,4 +1,4 @@
-import type { ConfidenceInterval, Estimable } from '../../estimability.ts';
+import { type ConfidenceInterval, type Estimable, notEstimable } from '../../estimability.ts';
 import { twoOneSidedRatioTests, twoOneSidedTests } from '../../inference/equivalence.ts';
 import type {
   EquivalenceInput,
@@ -9,6 +9,14 @@ import { ratioFromLogDifference } from '../../inference/log-scale.ts';
 import type { MeasurePlan } from '../../protocol/protocol.ts';
 import type { CellSummary } from '../result-types.ts';
 
+/** Ratios beyond e^±700 are at the end of what a double can hold. */
+const LOG_RATIO_MAX = 700;
+
+const beyondRange = notEstimable(
+  'out-of-range',
+  'An end of the interval is too far from 1 to be carried back from logarithms.',
+);
+
 /** A comparison of mean logarithms as a ratio; null on other scales. */
 export function ratioOf(
   summary: CellSummary,
@@ -17,6 +25,8 @@ export function ratioOf(
 ): Estimable<RatioEstimate> | null {
   if (summary !== 'mean-logarithm') return null;
   if (!interval.estimable) return interval;
+  const ends = [interval.lower, interval.upper];
+  if (ends.some((end) => Math.abs(end) > LOG_RATIO_MAX)) return beyondRange;
   return { estimable: true, ...ratioFromLogDifference(estimate, interval) };
 }
 
@@ -32,5 +42,10 @@ export function equivalenceOf(
   if (equivalence === null) return null;
   const test = summary === 'mean-logarithm' ? twoOneSidedRatioTests : twoOneSidedTests;
   const { lower: lowerMargin, upper: upperMargin } = equivalence;
-  return { estimable: true, ...test({ ...comparison, lowerMargin, upperMargin, alpha }) };
+  if (alpha >= 0.5) {
+    const detail = 'Two one-sided tests need an alpha below one half.';
+    return notEstimable('out-of-range', detail);
+  }
+  const found = test({ ...comparison, lowerMargin, upperMargin, alpha });
+  return Number.isFinite(found.interval.upper) ? { estimable: true, ...found } : beyondRange;
 }

@@ -14,7 +14,7 @@ export interface MethodInput {
   readonly participants: readonly ParticipantValues[];
   /** How the cells of `periodFit` were summarised. */
   readonly fitSummary: CellSummary;
-  /** participant + condition + period by least squares; or why logarithms cannot be had. */
+  /** participant + condition + period by least squares; or why its values cannot be used. */
   readonly fit: ConditionFit;
   readonly seed: string;
 }

@@ -3,7 +3,7 @@ import { pairedComparison } from '../../inference/paired-comparison.ts';
 import { repeatedMeasuresAnova } from '../../models/repeated-measures-anova.ts';
 import type { RepeatedMeasuresAnova, TableFactor } from '../../models/repeated-measures-types.ts';
 import type { Factor } from '../../protocol/protocol.ts';
-import { type ConditionRow, logarithmFault } from '../cell-summaries.ts';
+import { type ConditionRow, valuesFault } from '../cell-summaries.ts';
 import {
   type ComparedPair,
   comparedPairs,
@@ -27,7 +27,7 @@ export const repeatedMeasuresAnovaMethod: Method & { readonly key: 'repeated-mea
   key: 'repeated-measures-anova',
   run: (input): RepeatedMeasuresAnovaResult => {
     const { data, plan, standing, fitSummary, fit } = input;
-    const fault = logarithmFault(input.participants, fitSummary);
+    const fault = valuesFault(input.participants, fitSummary);
     const usable = fault === null ? input : { ...input, participants: [] };
     const { rows, complete, leftOut } = completeRows(usable, fitSummary);
     const conditionKeys = data.conditions.map(({ key }) => key);

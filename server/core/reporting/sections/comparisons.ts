@@ -81,7 +81,7 @@ ${comparisonTable(set, measure, context)}`,
 
 function setText({ basis, multiplicity, familySize }: ComparisonSet): string {
   const family = countText(familySize, 'comparison');
-  return `Basis: ${BASES[basis]}. In all ${family}; p-values ${ADJUSTMENTS[multiplicity]}.`;
+  return `Basis: ${BASES[basis]}; ${family}, p-values ${ADJUSTMENTS[multiplicity]}.`;
 }
 
 /** The comparisons that were not named as primary, for comparison with those that were. */

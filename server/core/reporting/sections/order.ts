@@ -93,13 +93,14 @@ function fitPart(
     lower: back(interval.lower),
     upper: back(interval.upper),
   }));
+  const drawable = marks.filter(({ upper }) => Number.isFinite(upper));
   const stray = [
     ...fit.notSeparable.periods.map((period) => `period ${period}`),
     ...fit.notSeparable.conditions,
   ];
   return html`<p>${text.lead}</p>
 ${
-  marks.length === 0
+  drawable.length === 0
     ? null
     : columnFigure({
         description: `Adjusted ${word} of ${measure.label} by period, with intervals.`,
@@ -108,7 +109,7 @@ ${
           `weighted equally; ${countText(fit.participants, 'participant')}, ` +
           `${countText(fit.observations, 'observation')}.`,
         axisLabel: responseLabel(measure),
-        marks,
+        marks: drawable,
       })
 }
 ${table({
