@@ -44,3 +44,34 @@ export async function narrowed(): Promise<'already-exists' | null> {
 
 // @ts-expect-error the folder is a path
 openFileOutbox(7);
+
+export const study = fairturn.study('x');
+
+// @ts-expect-error an arrival is of somebody new or of somebody returning
+study.arrive({ code: 'P07' });
+
+// @ts-expect-error somebody returning has a code
+study.arrive({ kind: 'returning' });
+
+// @ts-expect-error a withdrawal has a coded reason
+study.withdraw('P07', { reasonCode: 'bored', periodReached: 2 });
+
+// @ts-expect-error a period is a number, from 1
+study.startPeriod('P07', { period: 'first' });
+
+// @ts-expect-error a correction needs a reason
+study.correctTrial({ participant: 'P07', period: 1, repetition: 1, values: {} });
+
+// @ts-expect-error what becomes of the rows without fault is one of two
+study.upload([], { acceptance: 'some' });
+
+// @ts-expect-error a trial says under which condition it was taken
+study.upload([{ participant: 'P07', period: 1, repetition: 1, recordId: 'a', startedAt: '' }]);
+
+export async function exported(): Promise<number> {
+  let flagged = 0;
+  for await (const trial of study.exportTrials()) flagged += trial.flags.length;
+  // @ts-expect-error there is no such version of a trial
+  for await (const trial of study.exportTrials({ versions: 'first' })) flagged += trial.period;
+  return flagged;
+}
