@@ -1,5 +1,7 @@
 import type { ConfidenceInterval } from '../estimability.ts';
 
+const NO_BREAK_SPACE = '\u00a0';
+
 /** From here on digits before the point are no help to a reader. */
 const PLAIN_MAX = 1e9;
 
@@ -32,10 +34,11 @@ export function pValueText(pValue: number): string {
   return pValue.toFixed(3);
 }
 
-/** `p = 0.012` or `p < 0.001`. */
+/** `p = 0.012` or `p < 0.001`, never broken over lines. */
 export function pValuePhrase(pValue: number): string {
   const text = pValueText(pValue);
-  return /^[<>]/.test(text) ? `p ${text}` : `p = ${text}`;
+  const phrase = /^[<>]/.test(text) ? `p ${text}` : `p = ${text}`;
+  return phrase.replaceAll(' ', NO_BREAK_SPACE);
 }
 
 /** `0.31 to 1.20`. */
@@ -48,10 +51,11 @@ export function signedIntervalText({ lower, upper }: ConfidenceInterval, decimal
   return `${signedText(lower, decimals)} to ${signedText(upper, decimals)}`;
 }
 
-/** `95 %`, `97.5 %`. */
+/** `95 %`, `97.5 %`, never broken over lines. */
 export function percentText(fraction: number, decimals = 1): string {
   const text = numberText(100 * fraction, decimals);
-  return `${text.includes('.') ? text.replace(/\.?0+$/, '') : text} %`;
+  const number = text.includes('.') ? text.replace(/\.?0+$/, '') : text;
+  return `${number}${NO_BREAK_SPACE}%`;
 }
 
 /** Degrees of freedom: whole as they are, others to two decimals. */

@@ -167,8 +167,8 @@ describe('reportPage', () => {
     // Three pairs of three conditions for four measures, two against the reference for the fifth.
     expect(findings).toHaveLength(4 * 3 + 2);
     for (const finding of findings) {
-      expect(finding).toMatch(/95 % interval|no interval/);
-      expect(finding).toMatch(/adjusted\s+p (?:=|&lt;|&gt;) /);
+      expect(finding).toMatch(/95\s% interval|no interval/);
+      expect(finding).toMatch(/adjusted\s+p\s(?:=|&lt;|&gt;)\s/);
       expect(finding).toContain('does not say');
     }
   });

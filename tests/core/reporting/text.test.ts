@@ -29,14 +29,14 @@ describe('numbers in text', () => {
     expect(pValueText(0.000999)).toBe('< 0.001');
     expect(pValueText(0.9996)).toBe('> 0.999');
     expect(pValueText(1)).toBe('1.000');
-    expect(pValuePhrase(1e-300)).toBe('p < 0.001');
-    expect(pValuePhrase(0.05)).toBe('p = 0.050');
+    expect(pValuePhrase(1e-300)).toBe('p\u00a0<\u00a00.001');
+    expect(pValuePhrase(0.05)).toBe('p\u00a0=\u00a00.050');
   });
 
   it('drop decimals that say nothing from percentages and degrees of freedom', () => {
-    expect(percentText(0.95)).toBe('95 %');
-    expect(percentText(0.975)).toBe('97.5 %');
-    expect(percentText(0.1)).toBe('10 %');
+    expect(percentText(0.95)).toBe('95\u00a0%');
+    expect(percentText(0.975)).toBe('97.5\u00a0%');
+    expect(percentText(0.1)).toBe('10\u00a0%');
     expect(degreesOfFreedomText(24)).toBe('24');
     expect(degreesOfFreedomText(15.502)).toBe('15.50');
   });
