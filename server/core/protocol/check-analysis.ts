@@ -113,7 +113,7 @@ function contrastFaults(
 }
 
 function equivalenceFaults(
-  { equivalence, method }: MeasurePlan,
+  { alpha, equivalence, method }: MeasurePlan,
   measure: Measure | undefined,
   planPointer: string,
 ): ProtocolFault[] {
@@ -123,6 +123,11 @@ function equivalenceFaults(
   if (method !== 'repeated-measures-anova') {
     const message = `Equivalence is not tested by ${method}, but by repeated-measures-anova`;
     faults.push({ pointer, code: 'equivalence-unsuited-to-method', message });
+  }
+  if (alpha >= 0.5) {
+    // Two one-sided tests go with the interval of level 1 − 2·alpha, which must not be empty.
+    const message = 'Two one-sided tests need an alpha below 0.5';
+    faults.push({ pointer, code: 'alpha-too-large-for-equivalence', message });
   }
   if (measure === undefined) return faults;
   const { lower, upper } = equivalence;

@@ -184,6 +184,13 @@ describe('faults of the analysis plan', () => {
       (p) => (p.analysis.measures[1]!.equivalence = { lower: -1, upper: 1 }),
       [`${a}/1/equivalence`, 'equivalence-unsuited-to-method'],
     ],
+    'equivalence at an alpha that leaves no interval': [
+      (p) => {
+        p.analysis.measures[0]!.equivalence = { lower: 0.8, upper: 1.25 };
+        p.analysis.measures[0]!.alpha = 0.5;
+      },
+      [`${a}/0/equivalence`, 'alpha-too-large-for-equivalence'],
+    ],
     'margins that are not ratios, and not differences': [
       (p) => {
         p.analysis.measures[0]!.equivalence = { lower: -0.2, upper: 1.25 };
