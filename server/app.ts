@@ -13,13 +13,15 @@ import { createAccessService } from '#server/access/service.ts';
 import { allocationsRoutes } from '#server/allocations/routes.ts';
 import { createAllocationsService } from '#server/allocations/service.ts';
 import { analysisRoutes } from '#server/analyses/routes.ts';
-import { createAnalysesService } from '#server/analyses/service.ts';
+import { createAnalysesService, forgetSnapshotParticipant } from '#server/analyses/service.ts';
 import { auditRoutes } from '#server/audit/routes.ts';
 import { createAuditService } from '#server/audit/service.ts';
 import { reportRoutes } from '#server/reports/routes.ts';
 import { createReportsService } from '#server/reports/service.ts';
 import { studiesRoutes } from '#server/studies/routes.ts';
 import { createStudiesService } from '#server/studies/service.ts';
+import { trialsRoutes } from '#server/trials/routes.ts';
+import { createTrialsService } from '#server/trials/service.ts';
 
 export interface AppOptions {
   readonly config: Config;
@@ -44,6 +46,7 @@ export async function buildApp({ config, database, logger }: AppOptions): Promis
   const studies = createStudiesService(database);
   const audit = createAuditService({ database, maySeeStudy: studies.maySeeStudy });
   const allocations = createAllocationsService(database);
+  const trials = createTrialsService({ database, onErase: [forgetSnapshotParticipant] });
   const queue = openSenderLater({ url: database.url, logger });
   app.addHook('onListen', () => queue.open());
   app.addHook('onClose', () => queue.stop(0));
@@ -61,6 +64,7 @@ export async function buildApp({ config, database, logger }: AppOptions): Promis
   await app.register(auditRoutes, { service: audit });
   await app.register(studiesRoutes, { service: studies });
   await app.register(allocationsRoutes, { service: allocations });
+  await app.register(trialsRoutes, { service: trials });
   await app.register(analysisRoutes, { service: analyses });
   await app.register(reportRoutes, { service: createReportsService(database) });
   return app;

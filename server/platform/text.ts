@@ -8,9 +8,14 @@ export function text(max: number) {
   return z
     .string()
     .max(max)
-    .refine((value) => value.isWellFormed() && !value.includes('\u0000'), {
+    .refine(isStorable, {
       message: 'Holds NUL or half a surrogate pair, which cannot be stored.',
     });
+}
+
+/** Whether JSON, canonical JSON and PostgreSQL can all carry a text. */
+export function isStorable(value: string): boolean {
+  return value.isWellFormed() && !value.includes('\u0000');
 }
 
 /** As `text`, without white space at its ends and with something in between. */
