@@ -26,15 +26,19 @@ await main();
 async function main(): Promise<void> {
   const folder = mkdtempSync(path.join(tmpdir(), 'fairturn-stations-'));
   let service: RunningService | undefined;
+  const cleanUp = async (): Promise<void> => {
+    for (const station of stations) station.kill();
+    await service?.stop();
+    rmSync(folder, { recursive: true, force: true });
+  };
+  process.once('SIGINT', () => void cleanUp().then(() => process.exit(130)));
   try {
     say('All data of this demo are invented; no participant exists.');
     service = await startService();
     say(`The service listens on ${service.url}, on an embedded database of its own`);
     await wholeJob(service, folder);
   } finally {
-    for (const station of stations) station.kill();
-    await service?.stop();
-    rmSync(folder, { recursive: true, force: true });
+    await cleanUp();
   }
   const shown = path.relative(process.cwd(), OUTPUT);
   process.stdout.write(
