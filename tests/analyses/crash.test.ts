@@ -253,7 +253,7 @@ describe('an erasure while the data are being frozen', () => {
       await waiting(1);
       const pending = study.lead.post(
         `/v1/studies/${study.studyId}/participants/${person?.code}/erasure`,
-        { reason: 'Asked for it.' },
+        { reasonCode: 'participant-request' },
       );
       await waiting(2);
       return { id: requested, erasure: pending };

@@ -4,6 +4,7 @@ import {
   type AnalysedStudy,
   arrive,
   registerStudy,
+  type UploadedTrial,
   uploadTrials,
 } from '../support/analysed-study.ts';
 import { type AnalysisState, filedReport, startWorker } from '../support/analysis-worker.ts';
@@ -101,8 +102,10 @@ describe('an analysis without a worker', () => {
 });
 
 describe('an analysis with a worker', () => {
+  let trials: UploadedTrial[];
+
   beforeAll(async () => {
-    await uploadTrials(study, await arrive(study, 6));
+    trials = await uploadTrials(study, await arrive(study, 6));
     await startWorker(service.databaseUrl);
   });
 
@@ -122,10 +125,14 @@ describe('an analysis with a worker', () => {
     expect(body.snapshot.sha256).toBe(report.body.snapshotSha256);
     expect(body.protocol.sha256).toBe(report.body.protocolSha256);
     expect(body.engineVersion).toContain(`node ${process.versions.node}`);
-    expect(body.result.measures[0].measure).toBe('time');
-    // Six people, two conditions, complete: F on 1 and 5 degrees of freedom (published: any text
-    // on one-way repeated measures; degrees of freedom k − 1 and (k − 1)(n − 1)).
-    expect(JSON.stringify(body.result.measures[0].method)).toContain('"repeated-measures-anova"');
+    expect(body.result.participantFlow.overall).toMatchObject({ arrived: 6, completed: 6 });
+    const [measure] = body.result.measures;
+    expect([measure.measure, measure.method.method]).toEqual(['time', 'repeated-measures-anova']);
+    // published: with two conditions F is the square of the paired t, on 1 and n − 1 degrees of
+    // freedom (any text on repeated measures). Here from the uploaded rows, in plain steps.
+    const [effect] = measure.method.anova.effects;
+    expect([effect.degreesOfFreedom, effect.errorDegreesOfFreedom]).toEqual([1, 5]);
+    expect(effect.fStatistic / pairedT(trials) ** 2).toBeCloseTo(1, 9);
     expect(await actionsOf(reportId)).toEqual(['report-filed']);
   });
 
@@ -221,6 +228,22 @@ describe('an analysis with a worker', () => {
     for (const row of rows) expect([row.job, row.reports]).toEqual(['completed', 0]);
   });
 });
+
+/** Paired t of thin against thick, on each participant's mean logarithm of the times. */
+function pairedT(trials: readonly UploadedTrial[]): number {
+  const meanLogarithm = (participant: string, condition: string): number => {
+    const own = trials.filter(
+      (trial) => trial.participant === participant && trial.condition === condition,
+    );
+    return own.reduce((sum, trial) => sum + Math.log(trial.values.time), 0) / own.length;
+  };
+  const people = [...new Set(trials.map((trial) => trial.participant))];
+  const differences = people.map((id) => meanLogarithm(id, 'thin') - meanLogarithm(id, 'thick'));
+  const n = differences.length;
+  const mean = differences.reduce((sum, difference) => sum + difference, 0) / n;
+  const squares = differences.reduce((sum, difference) => sum + (difference - mean) ** 2, 0);
+  return mean / Math.sqrt(squares / (n - 1) / n);
+}
 
 function eventNames(text: string): string[] {
   return [...text.matchAll(/^event: (\w+)$/gm)].map((match) => match[1] ?? '');

@@ -167,7 +167,7 @@ describe('a report on a participant who was erased since', () => {
     const [first] = participants;
     const erasure = await study.lead.post(
       `/v1/studies/${study.studyId}/participants/${first?.code}/erasure`,
-      { reason: 'Asked for it.' },
+      { reasonCode: 'participant-request' },
     );
     expect(erasure.status).toBeLessThan(300);
     const left = await service.database.sql`

@@ -160,11 +160,18 @@ export async function arrive(study: AnalysedStudy, count: number): Promise<Arriv
   return arrived;
 }
 
+/** A trial as uploaded, as far as a test computes with it. */
+export interface UploadedTrial {
+  readonly participant: string;
+  readonly condition: string;
+  readonly values: { readonly time: number };
+}
+
 /** Uploads every planned trial of these participants, with invented times. */
 export async function uploadTrials(
   study: AnalysedStudy,
   participants: readonly ArrivedParticipant[],
-): Promise<void> {
+): Promise<UploadedTrial[]> {
   const rows = participants.flatMap(({ code, conditions }, person) =>
     conditions.flatMap((condition, periodIndex) =>
       [1, 2].map((repetition) => ({
@@ -183,6 +190,7 @@ export async function uploadTrials(
     'idempotency-key': crypto.randomUUID(),
   });
   if (answer.status !== 201) throw new Error(`no upload: ${answer.status} ${answer.text}`);
+  return rows;
 }
 
 function inventedTime(
