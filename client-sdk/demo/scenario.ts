@@ -32,7 +32,9 @@ const EVENTS: Readonly<Record<string, Partial<StationOrders>>> = {
   'Fen 2': { withdrawal: { nth: 1, afterPeriod: 0, why: 'no-show' } },
 };
 
-/** Labs, sites, stations, people and the registered protocol: everything before the first arrival. */
+/**
+ * Labs, sites, stations, people and the registered protocol: everything before the first arrival.
+ */
 export async function setUp(options: {
   readonly url: string;
   readonly administratorToken: string;

@@ -29,7 +29,9 @@ function normal(draw: Draw): number {
   return Math.sqrt(-2 * Math.log(1 - draw())) * Math.cos(2 * Math.PI * draw());
 }
 
-/** A Poisson count, by multiplying uniforms; for small means. Source: Knuth, TAOCP vol. 2, 3.4.1. */
+/**
+ * A Poisson count, by multiplying uniforms; for small means. Source: Knuth, TAOCP vol. 2, 3.4.1.
+ */
 function poisson(mean: number, draw: Draw): number {
   const floor = Math.exp(-mean);
   let count = 0;

@@ -1,5 +1,5 @@
-// What is true in the demo's invented world: the effects behind every simulated value. All data made
-// from it are invented; no participant exists.
+// What is true in the demo's invented world: the effects behind every simulated value. All data
+// made from it are invented; no participant exists.
 
 export interface LinerTruth {
   readonly key: string;

@@ -116,7 +116,7 @@ export class Analysis {
       if (body !== null) yield* eventsIn(body, listen);
     } catch (error) {
       if (signal?.aborted === true) throw signal.reason;
-      // What the service refuses, it refuses to whoever asks again too; a broken stream it does not.
+      // A refusal will be the same for whoever asks again; a broken stream will not.
       if (error instanceof ProblemError && error.status < 500) throw error;
     } finally {
       clearTimeout(quiet);

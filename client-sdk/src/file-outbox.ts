@@ -18,11 +18,12 @@ const CHECKSUM_LENGTH = 16;
 const FILE_NAME = 'outbox.log';
 
 /**
- * Keeps an outbox in a folder: an append-only file of lines, each with a checksum and each on the disk
- * (fsync) before `put` or `remove` resolve. The folder is held while the storage is open.
+ * Keeps an outbox in a folder: an append-only file of lines, each with a checksum and each on the
+ * disk (fsync) before `put` or `remove` resolve. The folder is held while the storage is open.
  *
- * A last line that was torn by a crash was never acknowledged; it is cut off. A damaged line anywhere
- * else is reported, never skipped. Lines that are done with are dropped when the file is opened.
+ * A last line that was torn by a crash was never acknowledged; it is cut off. A damaged line
+ * anywhere else is reported, never skipped. Lines that are done with are dropped when the file is
+ * opened.
  *
  * @throws {FolderLockedError} when a live process has the folder open
  * @throws {OutboxDamagedError} naming the line

@@ -7,8 +7,8 @@ const SUFFIX = '.json';
 
 /**
  * A key-value store in a folder, one file a key, each replaced in one step and on the disk before
- * `set` resolves. File names are the hexadecimal of the keys, since file systems differ in what they
- * take for the same name.
+ * `set` resolves. File names are the hexadecimal of the keys, since file systems differ in what
+ * they take for the same name.
  */
 export async function openFileStore(folder: string): Promise<KeyValueStore> {
   await mkdir(folder, { recursive: true, mode: 0o700 });

@@ -40,10 +40,10 @@ const SERVER_FAULTS_MAX = 5;
 /**
  * Sends what a station produces, in order and once, whatever happens to the link or the station.
  *
- * An item is written down before it is sent and crossed out after it was answered. Between the two it
- * may be sent again, always under the same Idempotency-Key, so the service does it once. (Keys belong
- * to a token: exchange a station's token while its outbox is empty.) An item that the service refuses
- * is set aside with its problem and does not hold up those behind it.
+ * An item is written down before it is sent and crossed out after it was answered. Between the two
+ * it may be sent again, always under the same Idempotency-Key, so the service does it once. (Keys
+ * belong to a token: exchange a station's token while its outbox is empty.) An item that the
+ * service refuses is set aside with its problem and does not hold up those behind it.
  */
 export class Outbox {
   readonly #options: OutboxOptions;

@@ -1,7 +1,9 @@
 import { answered, type Connection } from './connection.ts';
 import type { Recomputation, ReportDetails } from './schemas.ts';
 
-/** A filed report: immutable, numbered, and recomputable by anybody who has what it was made from. */
+/**
+ * A filed report: immutable, numbered, and recomputable by anybody who has what it was made from.
+ */
 export class Report {
   readonly id: string;
   readonly #connection: Connection;

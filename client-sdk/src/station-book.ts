@@ -44,12 +44,12 @@ interface Booked {
 }
 
 /**
- * A station's own book of its participants, kept so that work goes on while the link is down: who has
- * which sequence, what was started when, and therefore what is due. What the station does meanwhile
- * goes through its outbox, with the time at which it really was.
+ * A station's own book of its participants, kept so that work goes on while the link is down: who
+ * has which sequence, what was started when, and therefore what is due. What the station does
+ * meanwhile goes through its outbox, with the time at which it really was.
  *
- * Somebody new cannot be checked in without the service, since only the service hands out sequences.
- * The book holds pseudonymous codes, which are personal data: `forget` whoever is done.
+ * Somebody new cannot be checked in without the service, since only the service hands out
+ * sequences. The book holds pseudonymous codes, which are personal data: `forget` whoever is done.
  */
 export class StationBook {
   readonly #study: Study;
@@ -78,8 +78,8 @@ export class StationBook {
   }
 
   /**
-   * What is due for a participant. While the link is down the station works it out by itself, washout
-   * included, from the allocation and the starts in its book.
+   * What is due for a participant. While the link is down the station works it out by itself,
+   * washout included, from the allocation and the starts in its book.
    *
    * @throws {NotInBookError} when the link is down and the participant is not in the book
    */
@@ -150,8 +150,8 @@ export class StationBook {
   }
 
   /**
-   * Changes the book, then sends, or queues what cannot be sent. What the service refuses leaves the
-   * book as it was and the outbox without it.
+   * Changes the book, then sends, or queues what cannot be sent. What the service refuses leaves
+   * the book as it was and the outbox without it.
    */
   async #deliver(
     code: string,

@@ -43,8 +43,8 @@ export interface UploadOutcome {
 const DEFAULT_BATCH_ROWS = 2000;
 
 /**
- * Sends trial rows as NDJSON. Each batch is one request with an Idempotency-Key of its own, kept until
- * it is answered, so that even a source that can be read only once survives a bad link.
+ * Sends trial rows as NDJSON. Each batch is one request with an Idempotency-Key of its own, kept
+ * until it is answered, so that even a source that can be read only once survives a bad link.
  *
  * @throws {ProblemError} `upload-refused`, with rows counted over the whole upload
  */

@@ -33,7 +33,8 @@ describe('server-sent events', () => {
     ['lines of data joined', 'data: YHOO\ndata: +2\ndata: 10\n\n', [['message', 'YHOO\n+2\n10']]],
     [
       'a comment, fields without a value, one space taken off',
-      ': test stream\n\ndata: first event\nid: 1\n\ndata:second event\nid\n\ndata:  third event\n\n',
+      ': test stream\n\ndata: first event\nid: 1\n\ndata:second event\nid\n\n' +
+        'data:  third event\n\n',
       [
         ['message', 'first event'],
         ['message', 'second event'],

@@ -45,7 +45,7 @@ describe('openapi.yaml', () => {
     expect(await documentFaults(text)).toEqual([]);
   });
 
-  it('would be refused with a wrong structure, an unresolved reference or a path without parameter', async () => {
+  it('would be refused with a fault in structure, reference or path', async () => {
     const wrong = [
       text.replace('responses:', 'answers:'),
       text.replace('"#/components/schemas/Problem"', '"#/components/schemas/Problems"'),

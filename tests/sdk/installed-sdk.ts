@@ -22,8 +22,8 @@ export interface InstalledSdk {
 }
 
 /**
- * Builds the SDK, packs it, and installs the tarball beside what it depends on, all in `folder`: the
- * work tree's own `dist` is left alone, since another test may be reading it.
+ * Builds the SDK, packs it, and installs the tarball beside what it depends on, all in `folder`:
+ * the work tree's own `dist` is left alone, since another test may be reading it.
  */
 export function installSdk(folder: string): InstalledSdk {
   const source = path.join(folder, 'source');

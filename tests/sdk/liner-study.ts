@@ -2,7 +2,9 @@ import { Fairturn, type Study } from '../../client-sdk/src/index.ts';
 import { exampleProtocol } from '../support/example-protocol.ts';
 import type { ListeningService } from './listening-service.ts';
 
-/** An enrolling study of one lab at one site, made through the SDK, as a lead and stations meet it. */
+/**
+ * An enrolling study of one lab at one site, made through the SDK, as a lead and stations meet it.
+ */
 export interface LinerStudy {
   readonly study: Study;
   readonly lead: Fairturn;

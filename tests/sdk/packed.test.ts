@@ -19,7 +19,9 @@ beforeAll(async () => {
 
 afterAll(() => service.close());
 
-/** The Nodes of this machine, one for each release: the tests' own and, if it differs, the host's. */
+/**
+ * The Nodes of this machine, one for each release: the tests' own and, if it differs, the host's.
+ */
 function nodes(): string[] {
   const onPath = (process.env.PATH ?? '')
     .split(path.delimiter)

@@ -57,7 +57,7 @@ describe('the README of the SDK', () => {
 
   it('has examples that the types accept', async () => {
     const file = path.join(sdk.folder, 'readme-types.ts');
-    // The one name of Node’s that the surrounding program brings; the rest is checked as it stands.
+    // The two names that the reader brings; the rest is checked as it stands.
     const given = 'declare const url: string;\ndeclare const administratorToken: string;\n';
     writeFileSync(file, given + program().replace(/^.*\n/, ''));
     const types = path.resolve(import.meta.dirname, '../../node_modules/@types');

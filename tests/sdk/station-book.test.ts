@@ -120,7 +120,7 @@ describe('arrivals over a bad link', () => {
 });
 
 describe('what is due while the link is down', () => {
-  it('is what the service said before, and after a start the washout of the next period', async () => {
+  it('is what the service said, and after a start the washout of the next period', async () => {
     const folder = temporaryFolder();
     const first = await openStation(rested, folder);
     const arrival = await first.book.arrive({ kind: 'new', stratum: EARLY });
@@ -195,7 +195,7 @@ describe('what the service refuses', () => {
     await station.outbox.close();
   });
 
-  it('is refused by the station itself while the link is down, unless it is a deviation', async () => {
+  it('is refused by the station itself without the link, unless it is a deviation', async () => {
     const station = await openStation(restless, temporaryFolder());
     const { participant } = await station.book.arrive({ kind: 'new', stratum: EARLY });
     const { code } = participant;

@@ -1,4 +1,4 @@
-// A station of the tests: puts labs `first`…`last` into its outbox, one by one, and sends as it goes.
+// A station of the tests: puts labs `first`…`last` into its outbox one by one, sending as it goes.
 // Arguments: url, token, outbox folder, first, last. Prints a line for what it has written down.
 import { Fairturn, Outbox } from '../../client-sdk/src/index.ts';
 import { openFileOutbox } from '../../client-sdk/src/node.ts';

@@ -1,5 +1,5 @@
-// Compiled, not run: what the SDK's types must take and must refuse. An expected error that does not
-// come is an error itself.
+// Compiled, not run: what the SDK's types must take and must refuse. An expected error that does
+// not come is an error itself.
 import { Fairturn, isProblem, type ProblemType, type Site } from '@fairturn/client';
 import { openFileOutbox } from '@fairturn/client/node';
 
