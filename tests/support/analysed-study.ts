@@ -49,7 +49,7 @@ export function gloveProtocol(siteId: string) {
       visits: [[1, 2]],
       washout: { minimum: 'PT0S', maximum: null },
     },
-    sites: [{ siteId, targetEnrolment: 40 }],
+    sites: [{ siteId, targetEnrolment: 400 }],
     measures: [
       {
         key: 'time',
