@@ -57,5 +57,6 @@ export const AnalysisEvents = z
   .describe(
     'Server-sent events. `progress` comes at once and whenever something changed; `ended` comes ' +
       'once, when the analysis has succeeded, failed or been cancelled, and closes the stream. ' +
-      'The data of each is an Analysis as JSON. Lines beginning with a colon keep the connection open.',
+      'The data of each is an Analysis as JSON. Lines beginning with a colon keep the ' +
+      'connection open.',
   );

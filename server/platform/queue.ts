@@ -7,8 +7,8 @@ const QUEUE_SCHEMA = 'pgboss';
 
 /**
  * A worker tells every 4 s that it still holds its job. A job whose worker stayed silent for 15 s
- * is given to another by the next supervision, at most 5 s later: a killed worker costs under half a
- * minute.
+ * is given to another by the next supervision, at most 5 s later: a killed worker costs under half
+ * a minute.
  */
 const HEARTBEAT_SECONDS = 15;
 const HEARTBEAT_REFRESH_SECONDS = 4;

@@ -41,8 +41,8 @@ async function recompute(database: Database, report: ReportRow): Promise<Compute
     case 'erased':
       throw new ProblemError(
         'snapshot-erased',
-        `Since report ${report.number} was filed, the data of ${erased(ended.participants)} under ` +
-          'it were erased. It can be read and checked against its hash, not computed again.',
+        `The data of ${erased(ended.participants)} under report ${report.number} were erased ` +
+          'since it was filed. It can be read and checked against its hash, not computed again.',
       );
     case 'altered':
       throw new ProblemError(

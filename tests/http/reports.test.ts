@@ -177,7 +177,7 @@ describe('a report on a participant who was erased since', () => {
     expect((await study.lead.get(`/v1/reports/${reportId}`)).status).toBe(200);
     const answer = await recomputed();
     expect([answer.status, answer.body.type]).toEqual([410, '/problems/snapshot-erased']);
-    expect(answer.body.detail).toContain('the data of 1 participant under it');
+    expect(answer.body.detail).toContain('The data of 1 participant under report');
   });
 
   it('is followed by a report without them, which can be computed again', async () => {
