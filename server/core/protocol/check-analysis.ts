@@ -124,7 +124,7 @@ function equivalenceFaults(
     const message = `Equivalence is not tested by ${method}, but by repeated-measures-anova`;
     faults.push({ pointer, code: 'equivalence-unsuited-to-method', message });
   }
-  if (alpha >= 0.5) {
+  if (alpha >= 0.5 && alpha < 1) {
     // Two one-sided tests go with the interval of level 1 − 2·alpha, which must not be empty.
     const message = 'Two one-sided tests need an alpha below 0.5';
     faults.push({ pointer, code: 'alpha-too-large-for-equivalence', message });
