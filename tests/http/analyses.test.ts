@@ -3,6 +3,7 @@ import { afterAll, beforeAll, describe, expect, it } from 'vitest';
 import {
   type AnalysedStudy,
   arrive,
+  gloveProtocol,
   registerStudy,
   type UploadedTrial,
   uploadTrials,
@@ -218,6 +219,38 @@ describe('an analysis with a worker', () => {
     ]);
   });
 
+  it('takes in versions with the same conditions, and says which', async () => {
+    const amended = await registerStudy(service);
+    await uploadTrials(amended, await arrive(amended, 2));
+    await amend(amended, (protocol) => ({ ...protocol, title: 'Two liners, renamed' }));
+    await uploadTrials(amended, await arrive(amended, 3));
+    const report = await amended.lead.get(`/v1/reports/${await filedReport(amended)}`);
+    expect(versionNumbers(report.body.body)).toEqual([1, 2]);
+    expect(report.body.body.result.participantFlow.overall.arrived).toBe(5);
+
+    await amend(amended, (protocol) => {
+      const [liner] = protocol.withinFactors;
+      const levels = [...(liner?.levels ?? []), { key: 'none', label: 'None' }];
+      const periods = { ...protocol.periods, count: 3, visits: [[1, 2, 3]] };
+      const withinFactors = [{ key: 'liner', label: 'Liner', levels }];
+      return { ...protocol, withinFactors, periods };
+    });
+    await uploadTrials(amended, await arrive(amended, 4));
+    const third = await amended.lead.get(`/v1/reports/${await filedReport(amended)}`);
+    expect(third.body.protocolVersion).toBe(3);
+    expect(versionNumbers(third.body.body)).toEqual([3]);
+    expect(third.body.body.result.participantFlow.overall.arrived).toBe(4);
+    const looked = await service.database.sql<{ details: object }[]>`
+      select content::json->'details' as details from audit_entries
+      where chain = ${amended.studyId} and content::json->>'action' = 'looked'
+      order by number desc limit 1`;
+    expect(looked[0]?.details).toMatchObject({
+      kind: 'analysis',
+      protocolVersions: [3],
+      participantsOfOtherVersions: 5,
+    });
+  });
+
   it('finds nothing left to do in the jobs of analyses that were cancelled before', async () => {
     const rows = await service.database.sql<{ id: string; job: string; reports: number }[]>`
       select a.id, j.state::text as job,
@@ -228,6 +261,26 @@ describe('an analysis with a worker', () => {
     for (const row of rows) expect([row.job, row.reports]).toEqual(['completed', 0]);
   });
 });
+
+/** Registers the next version of a study's protocol. */
+async function amend(
+  study: AnalysedStudy,
+  change: (protocol: ReturnType<typeof gloveProtocol>) => object,
+): Promise<void> {
+  const base = `/v1/studies/${study.studyId}`;
+  const draft = await study.lead.put(`${base}/protocol-draft`, {
+    revision: 0,
+    protocol: change(gloveProtocol(study.siteId)),
+  });
+  const { revision } = draft.body;
+  const reason = 'For the test.';
+  const version = await study.lead.post(`${base}/protocol-versions`, { revision, reason });
+  expect(version.status).toBe(201);
+}
+
+function versionNumbers(body: { snapshot: { protocolVersions: { number: number }[] } }): number[] {
+  return body.snapshot.protocolVersions.map(({ number }) => number);
+}
 
 /** Paired t of thin against thick, on each participant's mean logarithm of the times. */
 function pairedT(trials: readonly UploadedTrial[]): number {
