@@ -10,6 +10,7 @@
  * - `empty-between-cell`: a combination of between-factor levels has no participant
  * - `confounded-with-period`, `confounded-with-condition`: the data cannot tell the two apart
  * - `rank-deficient`: some, but not all, of the comparison can be estimated
+ * - `disconnected`: the sequences of a design do not determine the comparison
  * - `singular-covariance`: a determinant is zero within rounding, or n is too small for it
  * - `undefined-correction`: the formula's denominator is zero within rounding
  * - `all-differences-zero`, `all-values-tied`
@@ -30,6 +31,7 @@ export type NotEstimableReason =
   | 'confounded-with-period'
   | 'confounded-with-condition'
   | 'rank-deficient'
+  | 'disconnected'
   | 'singular-covariance'
   | 'undefined-correction'
   | 'all-differences-zero'

@@ -191,16 +191,20 @@ export function linearCombination(
     }
     z[row] = value / qr.r[row * qr.rank + row]!;
   }
+  // Rounding is judged against ‖z‖ times the dropped column's length, not against the terms of the
+  // sum: those may all be rounding themselves where a column is orthogonal to the combination.
+  const zNorm = normFrom(z, 0);
   let determined = true;
   qr.dropped.forEach((column, index) => {
     let implied = 0;
-    let size = Math.abs(weights[column]!);
+    let squares = 0;
     for (let row = 0; row < qr.rank; row += 1) {
-      const part = z[row]! * qr.rDropped[row * qr.dropped.length + index]!;
-      implied += part;
-      size += Math.abs(part);
+      const entry = qr.rDropped[row * qr.dropped.length + index]!;
+      implied += z[row]! * entry;
+      squares += entry * entry;
     }
-    if (Math.abs(implied - weights[column]!) > 1e-7 * Math.max(size, 1e-300)) determined = false;
+    const size = Math.abs(weights[column]!) + zNorm * Math.sqrt(squares);
+    if (Math.abs(implied - weights[column]!) > 1e-7 * size) determined = false;
   });
   return { determined, varianceFactor: z.reduce((sum, value) => sum + value * value, 0) };
 }
