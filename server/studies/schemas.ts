@@ -146,6 +146,21 @@ export const ConditionResponse = z
   })
   .meta({ id: 'Condition' });
 
+const EffectEfficiency = z
+  .strictObject({
+    efficiency: z
+      .number()
+      .nullable()
+      .describe(
+        'Average variance of the pairwise comparisons in an ideal layout with the same ' +
+          'replication over that of these sequences; null when some comparison cannot be estimated',
+      ),
+    notEstimable: z
+      .array(z.strictObject({ first: z.string(), second: z.string() }))
+      .describe('Pairs of conditions that these sequences cannot compare'),
+  })
+  .meta({ id: 'EffectEfficiency' });
+
 export const SchemePreviewResponse = z
   .strictObject({
     conditions: z.array(ConditionResponse),
@@ -174,6 +189,28 @@ export const SchemePreviewResponse = z
     carryoverBalanced: z
       .boolean()
       .describe('Every ordered pair of different conditions equally often, none after itself'),
+    stronglyCarryoverBalanced: z
+      .boolean()
+      .describe('Every ordered pair equally often, a condition after itself included'),
+    uniformWithinSequences: z
+      .boolean()
+      .describe('Every sequence presents every condition equally often'),
+    lags: z
+      .array(
+        z.strictObject({
+          lag: z.int().describe('Periods from the first condition of the pair to the second'),
+          balanced: z.boolean(),
+          stronglyBalanced: z.boolean(),
+        }),
+      )
+      .describe('Balance of ordered pairs at each distance; 1 is immediate succession'),
+    efficiency: z
+      .strictObject({
+        direct: EffectEfficiency.describe('Conditions, no carryover in the model'),
+        directAdjusted: EffectEfficiency.describe('Conditions, adjusted for carryover'),
+        carryover: EffectEfficiency.describe('First-order carryover, adjusted for conditions'),
+      })
+      .describe('With participants and periods fixed; 1 is the best there is for conditions'),
     targets: z.array(
       z.strictObject({
         targetEnrolment: z.int(),

@@ -1,4 +1,5 @@
 import { designProperties, wholeBlocks } from '#core/designs/design-properties.ts';
+import { designEfficiency, type EffectEfficiency } from '#core/designs/efficiency.ts';
 import { sequencesOf } from '#core/designs/sequences-of.ts';
 import { conditionKeysOf, withinFactorFaults } from '#core/protocol/check-factors.ts';
 import { schemeFaults } from '#core/protocol/check-scheme.ts';
@@ -23,7 +24,14 @@ export function schemePreview(body: SchemePreviewBody): SchemePreviewResponse {
   const conditions = conditionsOf(withinFactors).map(({ key, label }) => ({ key, label }));
   const sequences = sequencesOf(scheme, keys, periods);
   const properties = designProperties(sequences, keys.length);
+  const efficiency = designEfficiency(sequences, keys.length);
   const keyOf = (index: number): string => keys[index] ?? '';
+  const effect = ({ efficiency: share, contrasts }: EffectEfficiency) => ({
+    efficiency: share.estimable ? share.value : null,
+    notEstimable: contrasts
+      .filter(({ variance }) => !variance.estimable)
+      .map(({ first, second }) => ({ first: keyOf(first), second: keyOf(second) })),
+  });
   return {
     conditions,
     sequences: sequences.map((sequence, index) => ({
@@ -41,6 +49,18 @@ export function schemePreview(body: SchemePreviewBody): SchemePreviewResponse {
     ),
     uniformOnPeriods: properties.uniformOnPeriods,
     carryoverBalanced: properties.carryoverBalanced,
+    stronglyCarryoverBalanced: properties.stronglyCarryoverBalanced,
+    uniformWithinSequences: properties.uniformWithinSequences,
+    lags: properties.lags.map(({ lag, balanced, stronglyBalanced }) => ({
+      lag,
+      balanced,
+      stronglyBalanced,
+    })),
+    efficiency: {
+      direct: effect(efficiency.direct),
+      directAdjusted: effect(efficiency.directAdjusted),
+      carryover: effect(efficiency.carryover),
+    },
     targets: targetEnrolments.map((targetEnrolment) => ({
       targetEnrolment,
       ...wholeBlocks(properties.participantsPerBlock, targetEnrolment),

@@ -358,11 +358,45 @@ describe('a scheme preview', () => {
       expect(count).toBe(first === second ? 0 : 1);
     }
     expect(answer.body).toMatchObject({ uniformOnPeriods: true, carryoverBalanced: true });
+    expect(answer.body.lags).toHaveLength(3);
+    expect(answer.body.lags[0]).toEqual({ lag: 1, balanced: true, stronglyBalanced: false });
+    // published: Jones & Kenward, Design and Analysis of Cross-Over Trials, chapter 4: 90.91 % and
+    // 62.50 %, and full efficiency without carryover.
+    const { direct, directAdjusted, carryover } = answer.body.efficiency;
+    expect(direct.efficiency).toBeCloseTo(1, 12);
+    expect((100 * directAdjusted.efficiency).toFixed(2)).toBe('90.91');
+    expect(carryover).toEqual({ efficiency: expect.closeTo(0.625, 12), notEstimable: [] });
     expect(answer.body.targets).toEqual([
       { targetEnrolment: 0, blocks: 0, participants: 0, aboveTarget: 0 },
       { targetEnrolment: 4, blocks: 1, participants: 4, aboveTarget: 0 },
       { targetEnrolment: 17, blocks: 5, participants: 20, aboveTarget: 3 },
     ]);
+  });
+
+  it('says which conditions the sequences cannot compare', async () => {
+    const answer = await places.lead.post('/v1/scheme-previews', {
+      withinFactors: factor(['a', 'b', 'c', 'd']),
+      scheme: {
+        kind: 'custom-list',
+        sequences: [
+          ['a', 'b'],
+          ['b', 'a'],
+          ['c', 'd'],
+          ['d', 'c'],
+        ],
+      },
+      periods: 2,
+    });
+    expect(answer.status).toBe(200);
+    expect(answer.body.efficiency.direct).toEqual({
+      efficiency: null,
+      notEstimable: [
+        { first: 'a', second: 'c' },
+        { first: 'a', second: 'd' },
+        { first: 'b', second: 'c' },
+        { first: 'b', second: 'd' },
+      ],
+    });
   });
 
   it('names every fault of what cannot be built', async () => {

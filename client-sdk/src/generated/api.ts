@@ -1149,6 +1149,15 @@ export interface components {
             /** Format: date-time */
             judgedAt: string;
         };
+        EffectEfficiency: {
+            /** @description Average variance of the pairwise comparisons in an ideal layout with the same replication over that of these sequences; null when some comparison cannot be estimated */
+            efficiency: number | null;
+            /** @description Pairs of conditions that these sequences cannot compare */
+            notEstimable: {
+                first: string;
+                second: string;
+            }[];
+        };
         Erasure: {
             /**
              * Format: uuid
@@ -1644,6 +1653,26 @@ export interface components {
             uniformOnPeriods: boolean;
             /** @description Every ordered pair of different conditions equally often, none after itself */
             carryoverBalanced: boolean;
+            /** @description Every ordered pair equally often, a condition after itself included */
+            stronglyCarryoverBalanced: boolean;
+            /** @description Every sequence presents every condition equally often */
+            uniformWithinSequences: boolean;
+            /** @description Balance of ordered pairs at each distance; 1 is immediate succession */
+            lags: {
+                /** @description Periods from the first condition of the pair to the second */
+                lag: number;
+                balanced: boolean;
+                stronglyBalanced: boolean;
+            }[];
+            /** @description With participants and periods fixed; 1 is the best there is for conditions */
+            efficiency: {
+                /** @description Conditions, no carryover in the model */
+                direct: components["schemas"]["EffectEfficiency"];
+                /** @description Conditions, adjusted for carryover */
+                directAdjusted: components["schemas"]["EffectEfficiency"];
+                /** @description First-order carryover, adjusted for conditions */
+                carryover: components["schemas"]["EffectEfficiency"];
+            };
             targets: {
                 targetEnrolment: number;
                 /** @description Whole blocks for at least that many */

@@ -17,12 +17,27 @@ export interface DesignProperties {
   readonly carryoverBalanced: boolean;
   /** Every ordered pair equally often, a condition after itself included. */
   readonly stronglyCarryoverBalanced: boolean;
+  /** Pairs at every distance, from 1 to p − 1 periods. */
+  readonly lags: readonly LagBalance[];
+}
+
+/** How evenly conditions follow each other at one distance. */
+export interface LagBalance {
+  /** Periods from the first to the second of the pair; 1 is immediate succession. */
+  readonly lag: number;
+  /** Entry [first][second]: how often `second` comes `lag` periods after `first`. */
+  readonly orderedPairs: number[][];
+  /** Every ordered pair of two different conditions equally often, and none with itself. */
+  readonly balanced: boolean;
+  /** Every ordered pair equally often, a condition with itself included. */
+  readonly stronglyBalanced: boolean;
 }
 
 /**
  * Counts and balance of a set of sequences.
  * Source of the terms: Jones & Kenward, Design and Analysis of Cross-Over Trials, chapter 4
  * (uniform on periods, uniform within sequences, balanced and strongly balanced for carryover).
+ * A single period has no pairs: it counts as balanced, and `lags` is empty.
  *
  * @param sequences      rows of equal length p ≥ 1 of condition indices 0..conditionCount−1
  * @param conditionCount number of conditions, including any that no sequence presents
@@ -35,7 +50,6 @@ export function designProperties(
   const periods = sequences[0]?.length ?? 0;
   if (periods === 0) throw new DomainError('A design needs at least one sequence and one period');
   const conditionByPeriod = table(conditionCount, periods);
-  const orderedPairs = table(conditionCount, conditionCount);
   const withinSequences = table(sequences.length, conditionCount);
   for (const [row, sequence] of sequences.entries()) {
     if (sequence.length !== periods) throw new DomainError('Sequences differ in length');
@@ -45,21 +59,44 @@ export function designProperties(
       }
       increment(conditionByPeriod, condition, periodIndex);
       increment(withinSequences, row, condition);
-      const previous = sequence[periodIndex - 1];
-      if (previous !== undefined) increment(orderedPairs, previous, condition);
     }
   }
-  const differentPairs = orderedPairs.flatMap((row, first) => row.filter((_, i) => i !== first));
-  const samePairs = orderedPairs.map((row, first) => row[first] ?? 0);
+  const lags = Array.from({ length: periods - 1 }, (_, index) =>
+    lagBalance(sequences, conditionCount, index + 1),
+  );
+  const immediate = lags[0] ?? lagBalance(sequences, conditionCount, 1);
   return {
     periods,
     participantsPerBlock: sequences.length,
     conditionByPeriod,
-    orderedPairs,
+    orderedPairs: immediate.orderedPairs,
     uniformOnPeriods: allEqual(conditionByPeriod.flat()),
     uniformWithinSequences: withinSequences.every(allEqual),
-    carryoverBalanced: allEqual(differentPairs) && samePairs.every((count) => count === 0),
-    stronglyCarryoverBalanced: allEqual(orderedPairs.flat()),
+    carryoverBalanced: immediate.balanced,
+    stronglyCarryoverBalanced: immediate.stronglyBalanced,
+    lags,
+  };
+}
+
+function lagBalance(
+  sequences: readonly (readonly number[])[],
+  conditionCount: number,
+  lag: number,
+): LagBalance {
+  const orderedPairs = table(conditionCount, conditionCount);
+  for (const sequence of sequences) {
+    for (const [periodIndex, second] of sequence.entries()) {
+      const first = sequence[periodIndex - lag];
+      if (first !== undefined) increment(orderedPairs, first, second);
+    }
+  }
+  const different = orderedPairs.flatMap((row, first) => row.filter((_, i) => i !== first));
+  const same = orderedPairs.map((row, first) => row[first] ?? 0);
+  return {
+    lag,
+    orderedPairs,
+    balanced: allEqual(different) && same.every((count) => count === 0),
+    stronglyBalanced: allEqual(orderedPairs.flat()),
   };
 }
 

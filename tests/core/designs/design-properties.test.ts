@@ -29,6 +29,21 @@ describe('design properties', () => {
     ]);
   });
 
+  it('know balance at every lag apart from balance at the first', () => {
+    // By hand: cyclic rows from 0 1 3 2 (a Williams square of four) have the differences 1, 2, 3 at
+    // lag 1, each once, but 3, 1 at lag 2 and 2 at lag 3.
+    const properties = designProperties(
+      [0, 1, 2, 3].map((row) => [0, 1, 3, 2].map((entry) => (entry + row) % 4)),
+      4,
+    );
+    expect(properties.lags.map(({ lag, balanced }) => [lag, balanced])).toEqual([
+      [1, true],
+      [2, false],
+      [3, false],
+    ]);
+    expect(properties.lags[1]?.orderedPairs[0]).toEqual([0, 1, 0, 1]);
+  });
+
   it('count as a plain search through the rows does', () => {
     const rows = fc
       .tuple(fc.integer({ min: 1, max: 5 }), fc.integer({ min: 1, max: 6 }))
@@ -51,6 +66,12 @@ describe('design properties', () => {
               row.slice(1).filter((entry, i) => row[i] === a && entry === b),
             );
             expect(properties.orderedPairs[a]?.[b]).toBe(adjacent.length);
+            for (const { lag, orderedPairs } of properties.lags) {
+              const apart = sequences.flatMap((row) =>
+                row.slice(lag).filter((entry, i) => row[i] === a && entry === b),
+              );
+              expect(orderedPairs[a]?.[b]).toBe(apart.length);
+            }
           }
         }
       }),
