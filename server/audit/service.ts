@@ -56,9 +56,9 @@ export function createAuditService({ database, maySeeStudy }: AuditOptions) {
     },
 
     /**
-     * Signs the heads of the chains that the caller may see. The checkpoint is kept here too, but it
-     * proves something only where the database's administrators cannot reach it: a lab stores its
-     * copy elsewhere.
+     * Signs the heads of the chains that the caller may see. The checkpoint is kept here too, but
+     * it proves something only where the database's administrators cannot reach it: a lab stores
+     * its copy elsewhere.
      */
     makeCheckpoint: async (call: Call) => {
       const chains = await visibleChains(call, undefined);

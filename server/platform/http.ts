@@ -156,8 +156,8 @@ function asProblem(error: FastifyError | ProblemError, request: FastifyRequest):
 }
 
 /**
- * What of an unexpected error may be logged. Database errors carry the offending row and the query's
- * parameters in further fields, and those may be somebody's values.
+ * What of an unexpected error may be logged. Database errors carry the offending row and the
+ * query's parameters in further fields, and those may be somebody's values.
  */
 function loggable(error: unknown): { type: string; message: string; stack: string } {
   if (!(error instanceof Error)) return { type: typeof error, message: '', stack: '' };

@@ -111,7 +111,8 @@ function operationSection(
   return `<article id="${escaped(operation.operationId)}">
 <h3><code>${method.toUpperCase()} ${escaped(url)}</code></h3>
 <p>${escaped(operation.summary)}. ${escaped(operation.description)}</p>
-<p>Roles: ${roles.map(escaped).join(', ')}. Operation: <code>${escaped(operation.operationId)}</code></p>
+<p>Roles: ${roles.map(escaped).join(', ')}.
+Operation: <code>${escaped(operation.operationId)}</code></p>
 ${table}${body}${answers.join('')}</article>`;
 }
 

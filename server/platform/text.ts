@@ -5,12 +5,9 @@ import { z } from 'zod';
  * the character NUL and without half a surrogate pair.
  */
 export function text(max: number) {
-  return z
-    .string()
-    .max(max)
-    .refine(isStorable, {
-      message: 'Holds NUL or half a surrogate pair, which cannot be stored.',
-    });
+  return z.string().max(max).refine(isStorable, {
+    message: 'Holds NUL or half a surrogate pair, which cannot be stored.',
+  });
 }
 
 /** Whether JSON, canonical JSON and PostgreSQL can all carry a text. */

@@ -150,7 +150,7 @@ function isOutOfRange({ scale, validRange }: Measure, value: number | boolean): 
   );
 }
 
-/** A count out of another measure says nothing without it; one taken once a period is on trial 1. */
+/** A count out of another measure needs it; one taken once a period stands in repetition 1. */
 function exposureFault(
   { key, exposure }: Measure,
   fields: TrialFields,

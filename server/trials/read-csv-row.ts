@@ -16,8 +16,8 @@ const NUMBER = /^[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d{1,3})?$/;
 
 /**
  * Reads CSV rows under a header: the columns participant, period, repetition, condition, recordId,
- * startedAt, and if wanted endedAt, note, one a measure, and `missing.` with a measure's key for why
- * its value is missing. An empty field is one that was not given.
+ * startedAt, and if wanted endedAt, note, one a measure, and `missing.` with a measure's key for
+ * why its value is missing. An empty field is one that was not given.
  *
  * @param measures every measure of the study's protocol versions
  * @throws {ProblemError} `invalid-request`, naming every column that is unknown, double or absent
@@ -28,7 +28,8 @@ export function csvRowReader(header: RawRow, measures: ReadonlySet<string>) {
     const read = raw.fault === null ? csvFields(raw.text) : { fields: null, fault: raw.fault };
     if (read.fields === null) return refused(raw, number, [read.fault]);
     if (read.fields.length !== columns.length) {
-      const message = `Expected ${columns.length} fields as in the header, got ${read.fields.length}.`;
+      const received = read.fields.length;
+      const message = `Expected ${columns.length} fields as in the header, got ${received}.`;
       return refused(raw, number, [{ pointer: '', code: 'wrong-field-count', message }]);
     }
     return { number, text: raw.text, ...readRecord(columns, read.fields) };

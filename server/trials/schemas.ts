@@ -37,7 +37,7 @@ const RecordedTime = z.iso
 
 const Place = z.int().min(1);
 
-/** Documents a row; rows are read by `readFields`, which keeps its faults and is many times faster. */
+/** Documents a row. Rows are read by `readFields`, which is many times faster. */
 export const TrialRow = z
   .strictObject({
     participant: text(200).min(1).describe('Code of the participant; case is ignored'),

@@ -143,7 +143,8 @@ describe('the audit log', () => {
       await tx`delete from audit_entries where chain = ${CHAIN} and number = ${last}`;
       await tx`
         update audit_chains c set last_number = e.number, last_hash = e.hash
-        from audit_entries e where e.chain = ${CHAIN} and e.number = ${last - 1} and c.chain = ${CHAIN}`;
+        from audit_entries e
+        where e.chain = ${CHAIN} and e.number = ${last - 1} and c.chain = ${CHAIN}`;
     };
     // Without a checkpoint from outside a well-made cut leaves no trace: that is what it is for.
     expect((await tampered(cutToFit)).intact).toBe(true);

@@ -6,7 +6,7 @@ export function relativeError(actual: number, expected: number): number {
   return expected === 0 ? difference : difference / Math.abs(expected);
 }
 
-/** Fails when actual differs from expected by more than `tolerance`, relatively; NaN always fails. */
+/** Fails when actual and expected differ relatively by more than `tolerance`; NaN always fails. */
 export function expectRelative(
   actual: number,
   expected: number,
