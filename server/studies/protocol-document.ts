@@ -1,5 +1,5 @@
 import { z } from 'zod';
-import type { Protocol } from '#core/protocol/protocol.ts';
+import { type Protocol, TWO_CONDITION_DESIGNS } from '#core/protocol/protocol.ts';
 import { text } from '#platform/text.ts';
 
 /**
@@ -24,11 +24,25 @@ export const Factor = z
   })
   .meta({ id: 'Factor' });
 
+const CARRYOVER_BALANCED = [
+  'complete-permutations',
+  'williams',
+  'orthogonal-latin-squares',
+] as const;
+const BASES = [...CARRYOVER_BALANCED, 'cyclic-latin-square'] as const;
+
 export const SchemeChoice = z
   .discriminatedUnion('kind', [
-    z.strictObject({ kind: z.literal('complete-permutations') }),
-    z.strictObject({ kind: z.literal('cyclic-latin-square') }),
-    z.strictObject({ kind: z.literal('williams') }),
+    z.strictObject({ kind: z.enum(BASES) }).describe('Every condition once in each sequence'),
+    z
+      .strictObject({ kind: z.literal('mirrored'), base: z.enum(BASES) })
+      .describe('Each sequence of the base followed by its mirror image'),
+    z
+      .strictObject({ kind: z.literal('extra-period'), base: z.enum(CARRYOVER_BALANCED) })
+      .describe('Each sequence of the base with its last condition once more: strongly balanced'),
+    z
+      .strictObject({ kind: z.literal('two-conditions'), design: z.enum(TWO_CONDITION_DESIGNS) })
+      .describe('Named by its sequences; a is the first condition'),
     z.strictObject({
       kind: z.literal('custom-list'),
       sequences: z

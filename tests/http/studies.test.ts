@@ -373,6 +373,28 @@ describe('a scheme preview', () => {
     ]);
   });
 
+  it('builds a scheme on a base', async () => {
+    const answer = await places.lead.post('/v1/scheme-previews', {
+      withinFactors: factor(['a', 'b', 'c']),
+      scheme: { kind: 'extra-period', base: 'williams' },
+      periods: 4,
+    });
+    expect(answer.status).toBe(200);
+    // published: Lucas 1957, Journal of Dairy Science 40:225–239: strongly balanced
+    expect(answer.body.sequences[0].conditions).toEqual(['a', 'b', 'c', 'c']);
+    expect(answer.body).toMatchObject({
+      carryoverBalanced: false,
+      stronglyCarryoverBalanced: true,
+      uniformWithinSequences: false,
+    });
+    const refused = await places.lead.post('/v1/scheme-previews', {
+      withinFactors: factor(['a', 'b', 'c']),
+      scheme: { kind: 'extra-period', base: 'cyclic-latin-square' },
+      periods: 4,
+    });
+    expect([refused.status, refused.body.type]).toEqual([400, '/problems/invalid-request']);
+  });
+
   it('says which conditions the sequences cannot compare', async () => {
     const answer = await places.lead.post('/v1/scheme-previews', {
       withinFactors: factor(['a', 'b', 'c', 'd']),

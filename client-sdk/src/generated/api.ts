@@ -1612,14 +1612,23 @@ export interface components {
         };
         /** @description Where the sequences come from */
         SchemeChoice: {
-            /** @constant */
-            kind: "complete-permutations";
+            /** @enum {string} */
+            kind: "complete-permutations" | "williams" | "orthogonal-latin-squares" | "cyclic-latin-square";
         } | {
             /** @constant */
-            kind: "cyclic-latin-square";
+            kind: "mirrored";
+            /** @enum {string} */
+            base: "complete-permutations" | "williams" | "orthogonal-latin-squares" | "cyclic-latin-square";
         } | {
             /** @constant */
-            kind: "williams";
+            kind: "extra-period";
+            /** @enum {string} */
+            base: "complete-permutations" | "williams" | "orthogonal-latin-squares";
+        } | {
+            /** @constant */
+            kind: "two-conditions";
+            /** @enum {string} */
+            design: "ab-ba" | "aa-bb-ab-ba" | "abb-baa" | "aba-bab" | "aab-bba" | "abb-baa-aba-bab" | "abb-baa-aab-bba" | "aab-bba-aba-bab" | "abab-baba" | "aabb-bbaa" | "abba-baab" | "aabb-bbaa-abba-baab";
         } | {
             /** @constant */
             kind: "custom-list";

@@ -1,9 +1,13 @@
 import { DomainError } from '../errors.ts';
 import { schemeFaults } from '../protocol/check-scheme.ts';
-import type { SchemeChoice } from '../protocol/protocol.ts';
+import type { BaseScheme, SchemeChoice } from '../protocol/protocol.ts';
 import { completePermutations } from './complete-permutations.ts';
 import { customList } from './custom-list.ts';
 import { cyclicLatinSquare } from './cyclic-latin-square.ts';
+import { withExtraPeriod } from './extra-period.ts';
+import { mirrored } from './mirrored.ts';
+import { orthogonalLatinSquares } from './orthogonal-latin-squares.ts';
+import { twoConditionSequences } from './two-conditions.ts';
 import { williamsSquare } from './williams.ts';
 
 /**
@@ -22,14 +26,30 @@ export function sequencesOf(
 ): number[][] {
   const [fault] = schemeFaults(scheme, conditionKeys, periods);
   if (fault !== undefined) throw new DomainError(`${fault.message} (${fault.pointer})`);
+  const conditionCount = conditionKeys.length;
   switch (scheme.kind) {
-    case 'complete-permutations':
-      return completePermutations(conditionKeys.length);
-    case 'cyclic-latin-square':
-      return cyclicLatinSquare(conditionKeys.length);
-    case 'williams':
-      return williamsSquare(conditionKeys.length);
+    case 'mirrored':
+      return mirrored(baseSequences(scheme.base, conditionCount));
+    case 'extra-period':
+      return withExtraPeriod(baseSequences(scheme.base, conditionCount));
+    case 'two-conditions':
+      return twoConditionSequences(scheme.design);
     case 'custom-list':
       return customList(scheme.sequences, conditionKeys);
+    default:
+      return baseSequences(scheme.kind, conditionCount);
+  }
+}
+
+function baseSequences(base: BaseScheme, conditionCount: number): number[][] {
+  switch (base) {
+    case 'complete-permutations':
+      return completePermutations(conditionCount);
+    case 'cyclic-latin-square':
+      return cyclicLatinSquare(conditionCount);
+    case 'williams':
+      return williamsSquare(conditionCount);
+    case 'orthogonal-latin-squares':
+      return orthogonalLatinSquares(conditionCount);
   }
 }

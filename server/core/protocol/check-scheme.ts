@@ -1,17 +1,23 @@
+import { primePower } from '../numerics/finite-field.ts';
+import { customListFaults } from './check-custom-list.ts';
 import type { ProtocolFault } from './fault.ts';
-import type { SchemeChoice } from './protocol.ts';
+import {
+  type BaseScheme,
+  type SchemeChoice,
+  TWO_CONDITION_DESIGNS,
+  type TwoConditionDesign,
+} from './protocol.ts';
 
 /** Complete permutations stop here: 7 conditions have 7! = 5040 sequences, 8 have 40,320. */
 export const COMPLETE_PERMUTATION_CONDITIONS_MAX = 7;
 
-/** A custom list holds at most as many sequences as the largest complete set. */
-export const CUSTOM_SEQUENCES_MAX = 5040;
-
 /**
  * Everything that keeps a scheme from being built for these conditions and periods.
  *
- * - Complete permutations, cyclic Latin square and Williams need at least two conditions and as
- *   many periods as conditions.
+ * - Complete permutations, cyclic Latin square, Williams and orthogonal Latin squares need at least
+ *   two conditions and as many periods as conditions; orthogonal squares a prime power of them.
+ * - A mirrored scheme has twice as many periods as its base, an extra-period one has one more.
+ * - A design for two conditions has the periods that its name spells out.
  * - A custom list may have more or fewer periods than conditions. A sequence may stand in it more
  *   than once: every row is handed out as often as every other, so a repeated row is replicated.
  *
@@ -24,73 +30,107 @@ export function schemeFaults(
   conditionKeys: readonly string[],
   periods: number,
 ): ProtocolFault[] {
-  if (scheme.kind === 'custom-list') {
-    return customListFaults(scheme.sequences, conditionKeys, periods);
-  }
-  const faults: ProtocolFault[] = [];
   const conditionCount = conditionKeys.length;
-  const fault = (code: string, message: string): void => {
-    faults.push({ pointer: '/scheme', code, message });
-  };
-  if (conditionCount < 2) fault('scheme-needs-two-conditions', 'A scheme needs two conditions');
-  if (periods !== conditionCount) {
-    fault(
-      'scheme-needs-periods-equal-to-conditions',
-      `The scheme ${scheme.kind} needs as many periods as conditions, ` +
-        `but there are ${periods} periods and ${conditionCount} conditions`,
-    );
+  switch (scheme.kind) {
+    case 'custom-list':
+      return customListFaults(scheme.sequences, conditionKeys, periods);
+    case 'two-conditions':
+      return twoConditionFaults(scheme.design, conditionCount, periods);
+    case 'mirrored':
+      return [
+        ...baseFaults(scheme.base, conditionCount, '/scheme/base'),
+        ...periodFaults('a mirrored scheme', 2 * conditionCount, conditionCount, periods),
+      ];
+    case 'extra-period':
+      return [
+        ...baseFaults(scheme.base, conditionCount, '/scheme/base'),
+        ...periodFaults('an extra-period scheme', conditionCount + 1, conditionCount, periods),
+      ];
+    default:
+      return [
+        ...baseFaults(scheme.kind, conditionCount, '/scheme'),
+        ...equalPeriodFaults(scheme.kind, conditionCount, periods),
+      ];
   }
-  const isComplete = scheme.kind === 'complete-permutations';
-  if (isComplete && conditionCount > COMPLETE_PERMUTATION_CONDITIONS_MAX) {
-    fault(
-      'too-many-conditions-for-scheme',
+}
+
+/** Faults of a scheme that presents every condition once, apart from the number of periods. */
+function baseFaults(base: BaseScheme, conditionCount: number, pointer: string): ProtocolFault[] {
+  if (conditionCount < 2) {
+    const message = 'A scheme needs two conditions';
+    return [{ pointer, code: 'scheme-needs-two-conditions', message }];
+  }
+  if (base === 'complete-permutations' && conditionCount > COMPLETE_PERMUTATION_CONDITIONS_MAX) {
+    const message =
       `Complete permutations are built for at most ${COMPLETE_PERMUTATION_CONDITIONS_MAX} ` +
-        `conditions, but there are ${conditionCount}; a Williams square needs far fewer sequences`,
-    );
+      `conditions, but there are ${conditionCount}; a Williams square needs far fewer sequences`;
+    return [{ pointer, code: 'too-many-conditions-for-scheme', message }];
+  }
+  if (base === 'orthogonal-latin-squares' && primePower(conditionCount) === null) {
+    const message =
+      'A complete set of orthogonal Latin squares is known only for a prime power of conditions; ' +
+      `${conditionCount} is none, the nearest are ${nearestPrimePowers(conditionCount)}. A ` +
+      'Williams design balances immediate succession for any number';
+    return [{ pointer, code: 'conditions-not-a-prime-power', message }];
+  }
+  return [];
+}
+
+function equalPeriodFaults(kind: string, conditionCount: number, periods: number): ProtocolFault[] {
+  if (periods === conditionCount) return [];
+  const message =
+    `The scheme ${kind} needs as many periods as conditions, ` +
+    `but there are ${periods} periods and ${conditionCount} conditions`;
+  return [{ pointer: '/scheme', code: 'scheme-needs-periods-equal-to-conditions', message }];
+}
+
+/** @param scheme with its article, as it stands in the message */
+function periodFaults(
+  scheme: string,
+  needed: number,
+  conditionCount: number,
+  periods: number,
+): ProtocolFault[] {
+  if (periods === needed) return [];
+  const message =
+    `With ${conditionCount} conditions ${scheme} has ${needed} periods, ` +
+    `but the protocol has ${periods}`;
+  return [{ pointer: '/scheme', code: 'scheme-needs-other-periods', message }];
+}
+
+function twoConditionFaults(
+  design: TwoConditionDesign,
+  conditionCount: number,
+  periods: number,
+): ProtocolFault[] {
+  const faults: ProtocolFault[] = [];
+  if (conditionCount !== 2) {
+    const message = `The design ${design} is for two conditions, but there are ${conditionCount}`;
+    faults.push({ pointer: '/scheme', code: 'scheme-needs-just-two-conditions', message });
+  }
+  const needed = periodsOf(design);
+  if (periods !== needed) {
+    const fitting = TWO_CONDITION_DESIGNS.filter((other) => periodsOf(other) === periods);
+    const message =
+      `The design ${design} has ${needed} periods, but the protocol has ${periods}; ` +
+      (fitting.length > 0
+        ? `designs with ${periods}: ${fitting.join(', ')}`
+        : 'designs for two conditions have 2, 3 or 4');
+    faults.push({ pointer: '/scheme/design', code: 'scheme-needs-other-periods', message });
   }
   return faults;
 }
 
-function customListFaults(
-  sequences: readonly (readonly string[])[],
-  conditionKeys: readonly string[],
-  periods: number,
-): ProtocolFault[] {
-  const faults: ProtocolFault[] = [];
-  const pointer = '/scheme/sequences';
-  if (sequences.length === 0) {
-    faults.push({ pointer, code: 'no-sequences', message: 'A custom list needs a sequence' });
-  }
-  if (sequences.length > CUSTOM_SEQUENCES_MAX) {
-    const message = `A custom list holds at most ${CUSTOM_SEQUENCES_MAX} sequences`;
-    faults.push({ pointer, code: 'too-many-sequences', message });
-  }
-  const known = new Set(conditionKeys);
-  const presented = new Set<string>();
-  for (const [index, sequence] of sequences.entries()) {
-    if (sequence.length !== periods) {
-      faults.push({
-        pointer: `${pointer}/${index}`,
-        code: 'sequence-length-not-periods',
-        message: `This sequence has ${sequence.length} periods, the protocol has ${periods}`,
-      });
-    }
-    for (const [periodIndex, condition] of sequence.entries()) {
-      presented.add(condition);
-      if (known.has(condition)) continue;
-      faults.push({
-        pointer: `${pointer}/${index}/${periodIndex}`,
-        code: 'unknown-condition',
-        message: `"${condition}" is not a condition; the conditions are ${[...known].join(', ')}`,
-      });
-    }
-  }
-  for (const condition of sequences.length === 0 ? [] : conditionKeys) {
-    if (presented.has(condition)) continue;
-    const message = `No sequence presents the condition "${condition}"`;
-    faults.push({ pointer, code: 'condition-never-presented', message });
-  }
-  return faults;
+function periodsOf(design: TwoConditionDesign): number {
+  return design.indexOf('-');
+}
+
+function nearestPrimePowers(value: number): string {
+  let below = value - 1;
+  while (primePower(below) === null) below -= 1;
+  let above = value + 1;
+  while (primePower(above) === null) above += 1;
+  return `${below} and ${above}`;
 }
 
 /** Whether every participant meets every condition under the scheme. */
@@ -98,6 +138,14 @@ export function meetsEveryCondition(
   scheme: SchemeChoice,
   conditionKeys: readonly string[],
 ): boolean {
-  if (scheme.kind !== 'custom-list') return true;
-  return scheme.sequences.every((sequence) => conditionKeys.every((key) => sequence.includes(key)));
+  switch (scheme.kind) {
+    case 'custom-list':
+      return scheme.sequences.every((sequence) =>
+        conditionKeys.every((key) => sequence.includes(key)),
+      );
+    case 'two-conditions':
+      return scheme.design.split('-').every((row) => row.includes('a') && row.includes('b'));
+    default:
+      return true;
+  }
 }

@@ -40,10 +40,40 @@ export interface Level {
 
 /** The counterbalancing scheme the sequences come from. A custom list names condition keys. */
 export type SchemeChoice =
-  | { readonly kind: 'complete-permutations' }
-  | { readonly kind: 'cyclic-latin-square' }
-  | { readonly kind: 'williams' }
+  | { readonly kind: BaseScheme }
+  /** Each sequence of the base followed by its mirror image: twice as many periods. */
+  | { readonly kind: 'mirrored'; readonly base: BaseScheme }
+  /** Each sequence of the base with its last condition once more: strongly balanced. */
+  | { readonly kind: 'extra-period'; readonly base: CarryoverBalancedScheme }
+  | { readonly kind: 'two-conditions'; readonly design: TwoConditionDesign }
   | { readonly kind: 'custom-list'; readonly sequences: readonly (readonly string[])[] };
+
+/** Schemes in which every sequence presents every condition once. */
+export type BaseScheme = CarryoverBalancedScheme | 'cyclic-latin-square';
+
+/** Schemes in which every ordered pair of different conditions is adjacent equally often. */
+export type CarryoverBalancedScheme =
+  | 'complete-permutations'
+  | 'williams'
+  | 'orthogonal-latin-squares';
+
+/** Designs for two conditions, named by their sequences; a is the protocol's first condition. */
+export const TWO_CONDITION_DESIGNS = [
+  'ab-ba',
+  'aa-bb-ab-ba',
+  'abb-baa',
+  'aba-bab',
+  'aab-bba',
+  'abb-baa-aba-bab',
+  'abb-baa-aab-bba',
+  'aab-bba-aba-bab',
+  'abab-baba',
+  'aabb-bbaa',
+  'abba-baab',
+  'aabb-bbaa-abba-baab',
+] as const;
+
+export type TwoConditionDesign = (typeof TWO_CONDITION_DESIGNS)[number];
 
 /** The rule by which sequences of the scheme are handed out. */
 export type PolicyChoice = { readonly kind: 'balanced' };

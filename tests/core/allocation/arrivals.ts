@@ -3,7 +3,7 @@ import { type AllocationLedger, emptyLedger, issueNext } from '#core/allocation/
 import type { SlotRecord } from '#core/allocation/replay.ts';
 import type { SequenceSet } from '#core/allocation/tally.ts';
 import { sequencesOf } from '#core/designs/sequences-of.ts';
-import type { SchemeChoice } from '#core/protocol/protocol.ts';
+import type { BaseScheme } from '#core/protocol/protocol.ts';
 
 export const STUDY_ID = '0197f000-0000-7000-8000-000000000001';
 
@@ -12,7 +12,7 @@ export interface Arrival {
   readonly stratum: number;
 }
 
-export function setOf(kind: Exclude<SchemeChoice['kind'], 'custom-list'>, size: number) {
+export function setOf(kind: BaseScheme, size: number) {
   const keys = Array.from({ length: size }, (_, index) => `condition-${index}`);
   return { sequences: sequencesOf({ kind }, keys, size), conditionCount: size };
 }

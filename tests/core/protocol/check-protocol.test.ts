@@ -1,5 +1,6 @@
 import { describe, expect, it } from 'vitest';
 import { checkProtocol } from '#core/protocol/check-protocol.ts';
+import { schemeFaults } from '#core/protocol/check-scheme.ts';
 import { type Draft, each } from './fault-cases.ts';
 import { validProtocol } from './valid-protocol.ts';
 
@@ -14,6 +15,23 @@ describe('a valid protocol', () => {
       (p) => {
         p.betweenFactors = [];
         p.periods.washout.maximum = null;
+      },
+    ],
+    'may mirror a scheme': [
+      (p) => {
+        p.scheme = { kind: 'mirrored', base: 'williams' };
+        p.periods.count = 8;
+        p.periods.visits = [
+          [1, 2, 3, 4],
+          [5, 6, 7, 8],
+        ];
+      },
+    ],
+    'may repeat the last condition': [
+      (p) => {
+        p.scheme = { kind: 'extra-period', base: 'orthogonal-latin-squares' };
+        p.periods.count = 5;
+        p.periods.visits = [[1, 2, 3, 4, 5]];
       },
     ],
     'may repeat a sequence of a custom list, and have more periods than conditions': [
@@ -95,6 +113,46 @@ describe('faults of the scheme', () => {
         p.scheme = { kind: 'complete-permutations' };
       },
       ['/scheme', 'too-many-conditions-for-scheme'],
+    ],
+    'orthogonal squares of six conditions': [
+      (p) => {
+        p.withinFactors[0]!.levels = ['a', 'b', 'warm'].map((key) => ({ key, label: key }));
+        p.periods.count = 6;
+        p.periods.visits = [[1, 2, 3, 4, 5, 6]];
+        p.scheme = { kind: 'orthogonal-latin-squares' };
+      },
+      ['/scheme', 'conditions-not-a-prime-power'],
+    ],
+    'mirrored and extra-period schemes over as many periods as conditions': [
+      (p) => (p.scheme = { kind: 'mirrored', base: 'williams' }),
+      ['/scheme', 'scheme-needs-other-periods'],
+    ],
+    'extra-period scheme on complete permutations of eight': [
+      (p) => {
+        eight(p);
+        p.scheme = { kind: 'extra-period', base: 'complete-permutations' };
+      },
+      ['/scheme/base', 'too-many-conditions-for-scheme'],
+      ['/scheme', 'scheme-needs-other-periods'],
+    ],
+    'design for two conditions with four of them': [
+      (p) => (p.scheme = { kind: 'two-conditions', design: 'abb-baa' }),
+      ['/scheme', 'scheme-needs-just-two-conditions'],
+      ['/scheme/design', 'scheme-needs-other-periods'],
+    ],
+    'design for two conditions in which some participants meet one': [
+      (p) => {
+        p.withinFactors = p.withinFactors.slice(0, 1);
+        p.periods.count = 2;
+        p.periods.visits = [[1, 2]];
+        p.exclusions.pop();
+        p.scheme = { kind: 'two-conditions', design: 'aa-bb-ab-ba' };
+        p.analysis.measures = p.analysis.measures.filter(({ measure }) => measure === 'finished');
+        p.measures = p.measures.filter(({ key }) => key === 'finished');
+        p.analysis.measures[0]!.role = 'primary';
+        p.exclusions = [];
+      },
+      [`${a}/0/method`, 'method-needs-every-condition'],
     ],
     'empty custom list': [
       (p) => (p.scheme = { kind: 'custom-list', sequences: [] }),
@@ -213,3 +271,18 @@ function at(document: unknown, pointer: string): unknown {
   }
   return value;
 }
+
+describe('the message of a scheme fault', () => {
+  const keys = (count: number) => Array.from({ length: count }, (_, index) => `c${index}`);
+
+  it.each([
+    [{ kind: 'orthogonal-latin-squares' }, 6, 6, /the nearest are 5 and 7.*Williams/],
+    [{ kind: 'mirrored', base: 'williams' }, 3, 3, /has 6 periods, but the protocol has 3/],
+    [{ kind: 'extra-period', base: 'williams' }, 3, 3, /has 4 periods, but the protocol has 3/],
+    [{ kind: 'two-conditions', design: 'ab-ba' }, 2, 3, /with 3: abb-baa, aba-bab, aab-bba/],
+    [{ kind: 'two-conditions', design: 'ab-ba' }, 2, 5, /two conditions have 2, 3 or 4/],
+  ] as const)('says what would work: %j', (scheme, count, periods, message) => {
+    const faults = schemeFaults(scheme, keys(count), periods);
+    expect(faults.map((fault) => fault.message).join()).toMatch(message);
+  });
+});

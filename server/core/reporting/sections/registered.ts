@@ -41,6 +41,10 @@ const SCHEMES: { readonly [Kind in Protocol['scheme']['kind']]: string } = {
   'complete-permutations': 'complete permutations',
   'cyclic-latin-square': 'cyclic Latin square',
   williams: 'Williams design',
+  'orthogonal-latin-squares': 'complete set of orthogonal Latin squares',
+  mirrored: 'each sequence followed by its mirror image',
+  'extra-period': 'last condition repeated in an extra period',
+  'two-conditions': 'design for two conditions',
   'custom-list': 'a list of sequences given in the protocol',
 };
 
