@@ -31,6 +31,28 @@ const CARRYOVER_BALANCED = [
 ] as const;
 const BASES = [...CARRYOVER_BALANCED, 'cyclic-latin-square'] as const;
 
+const OrderConstraint = z
+  .discriminatedUnion('kind', [
+    z
+      .strictObject({
+        kind: z.enum(['never-in-periods', 'always-in-periods']),
+        condition: Key,
+        periods: z.array(z.int()).max(ListMax).describe('Period numbers from 1'),
+      })
+      .describe('The condition stands in none of these periods, or in these alone'),
+    z
+      .strictObject({
+        kind: z.enum(['never-adjacent', 'never-in-order']),
+        first: Key,
+        second: Key,
+      })
+      .describe('Neither immediately after the other, or the second never after the first'),
+    z
+      .strictObject({ kind: z.literal('familiarisation-first'), condition: Key })
+      .describe('The condition stands in period 1, and in no other'),
+  ])
+  .meta({ id: 'OrderConstraint', description: 'What an order must not do' });
+
 export const SchemeChoice = z
   .discriminatedUnion('kind', [
     z.strictObject({ kind: z.enum(BASES) }).describe('Every condition once in each sequence'),
@@ -43,6 +65,36 @@ export const SchemeChoice = z
     z
       .strictObject({ kind: z.literal('two-conditions'), design: z.enum(TWO_CONDITION_DESIGNS) })
       .describe('Named by its sequences; a is the first condition'),
+    z
+      .strictObject({
+        kind: z.literal('permutation-fraction'),
+        squares: z.int().describe('Williams squares; pairs of them for odd numbers of conditions'),
+      })
+      .describe('A balanced fraction of the complete permutations'),
+    z
+      .strictObject({
+        kind: z.literal('random-permutations'),
+        count: z.int().describe('How many orders are drawn'),
+        seed: text(100).describe('16 hexadecimal digits: the same seed gives the same orders'),
+        generator: z
+          .strictObject({ name: text(100), version: z.int() })
+          .describe('What draws the orders: philox4x32-10, version 1'),
+      })
+      .describe('Orders drawn at random, each independently of the others'),
+    z
+      .strictObject({
+        kind: z.literal('constrained-permutations'),
+        constraints: z.array(OrderConstraint).max(ListMax),
+      })
+      .describe('Every order of the conditions that meets the constraints'),
+    z
+      .strictObject({
+        kind: z.literal('nested'),
+        blockedFactor: z.int().describe('Place among the within factors, from 1'),
+        blocks: z.enum(BASES).describe('Orders of the blocks'),
+        insideBlocks: z.enum(BASES).describe('Orders inside a block'),
+      })
+      .describe('The levels of one factor in blocks, the other factors counterbalanced inside'),
     z.strictObject({
       kind: z.literal('custom-list'),
       sequences: z

@@ -1332,6 +1332,27 @@ export interface components {
                 upper: number;
             } | null;
         };
+        /** @description What an order must not do */
+        OrderConstraint: {
+            /** @enum {string} */
+            kind: "never-in-periods" | "always-in-periods";
+            /** @description Lower-case words joined by hyphens */
+            condition: string;
+            /** @description Period numbers from 1 */
+            periods: number[];
+        } | {
+            /** @enum {string} */
+            kind: "never-adjacent" | "never-in-order";
+            /** @description Lower-case words joined by hyphens */
+            first: string;
+            /** @description Lower-case words joined by hyphens */
+            second: string;
+        } | {
+            /** @constant */
+            kind: "familiarisation-first";
+            /** @description Lower-case words joined by hyphens */
+            condition: string;
+        };
         Participant: {
             /** Format: uuid */
             id: string;
@@ -1629,6 +1650,42 @@ export interface components {
             kind: "two-conditions";
             /** @enum {string} */
             design: "ab-ba" | "aa-bb-ab-ba" | "abb-baa" | "aba-bab" | "aab-bba" | "abb-baa-aba-bab" | "abb-baa-aab-bba" | "aab-bba-aba-bab" | "abab-baba" | "aabb-bbaa" | "abba-baab" | "aabb-bbaa-abba-baab";
+        } | {
+            /** @constant */
+            kind: "permutation-fraction";
+            /** @description Williams squares; pairs of them for odd numbers of conditions */
+            squares: number;
+        } | {
+            /** @constant */
+            kind: "random-permutations";
+            /** @description How many orders are drawn */
+            count: number;
+            /** @description 16 hexadecimal digits: the same seed gives the same orders */
+            seed: string;
+            /** @description What draws the orders: philox4x32-10, version 1 */
+            generator: {
+                name: string;
+                version: number;
+            };
+        } | {
+            /** @constant */
+            kind: "constrained-permutations";
+            constraints: components["schemas"]["OrderConstraint"][];
+        } | {
+            /** @constant */
+            kind: "nested";
+            /** @description Place among the within factors, from 1 */
+            blockedFactor: number;
+            /**
+             * @description Orders of the blocks
+             * @enum {string}
+             */
+            blocks: "complete-permutations" | "williams" | "orthogonal-latin-squares" | "cyclic-latin-square";
+            /**
+             * @description Orders inside a block
+             * @enum {string}
+             */
+            insideBlocks: "complete-permutations" | "williams" | "orthogonal-latin-squares" | "cyclic-latin-square";
         } | {
             /** @constant */
             kind: "custom-list";

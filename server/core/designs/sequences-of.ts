@@ -1,12 +1,17 @@
 import { DomainError } from '../errors.ts';
 import { schemeFaults } from '../protocol/check-scheme.ts';
+import { conditionBlocks } from '../protocol/condition-blocks.ts';
 import type { BaseScheme, SchemeChoice } from '../protocol/protocol.ts';
 import { completePermutations } from './complete-permutations.ts';
+import { constrainedPermutations } from './constrained-permutations.ts';
 import { customList } from './custom-list.ts';
 import { cyclicLatinSquare } from './cyclic-latin-square.ts';
 import { withExtraPeriod } from './extra-period.ts';
 import { mirrored } from './mirrored.ts';
+import { nested } from './nested.ts';
 import { orthogonalLatinSquares } from './orthogonal-latin-squares.ts';
+import { permutationFraction } from './permutation-fraction.ts';
+import { randomPermutations } from './random-permutations.ts';
 import { twoConditionSequences } from './two-conditions.ts';
 import { williamsSquare } from './williams.ts';
 
@@ -34,6 +39,20 @@ export function sequencesOf(
       return withExtraPeriod(baseSequences(scheme.base, conditionCount));
     case 'two-conditions':
       return twoConditionSequences(scheme.design);
+    case 'permutation-fraction':
+      return permutationFraction(conditionCount, scheme.squares);
+    case 'random-permutations':
+      return randomPermutations(scheme, conditionCount);
+    case 'constrained-permutations':
+      return constrainedPermutations(scheme.constraints, conditionKeys);
+    case 'nested': {
+      const groups = conditionBlocks(conditionKeys, scheme.blockedFactor);
+      return nested(
+        groups,
+        baseSequences(scheme.blocks, groups.length),
+        baseSequences(scheme.insideBlocks, groups[0]?.length ?? 0),
+      );
+    }
     case 'custom-list':
       return customList(scheme.sequences, conditionKeys);
     default:

@@ -1,7 +1,5 @@
 import type { ProtocolFault } from './fault.ts';
-
-/** A custom list holds at most as many sequences as the largest complete set. */
-export const CUSTOM_SEQUENCES_MAX = 5040;
+import { SEQUENCES_MAX } from './protocol.ts';
 
 /**
  * Faults of a custom list of sequences: none or too many of them, one whose length is not the
@@ -17,8 +15,8 @@ export function customListFaults(
   if (sequences.length === 0) {
     faults.push({ pointer, code: 'no-sequences', message: 'A custom list needs a sequence' });
   }
-  if (sequences.length > CUSTOM_SEQUENCES_MAX) {
-    const message = `A custom list holds at most ${CUSTOM_SEQUENCES_MAX} sequences`;
+  if (sequences.length > SEQUENCES_MAX) {
+    const message = `A custom list holds at most ${SEQUENCES_MAX} sequences`;
     faults.push({ pointer, code: 'too-many-sequences', message });
   }
   const known = new Set(conditionKeys);

@@ -1,9 +1,13 @@
 import { primePower } from '../numerics/finite-field.ts';
 import { customListFaults } from './check-custom-list.ts';
+import { constrainedFaults, fractionFaults, randomFaults } from './check-permutation-schemes.ts';
+import { conditionBlocks, withinFactorCount } from './condition-blocks.ts';
 import type { ProtocolFault } from './fault.ts';
 import {
   type BaseScheme,
+  type NestedScheme,
   type SchemeChoice,
+  SEQUENCES_MAX,
   TWO_CONDITION_DESIGNS,
   type TwoConditionDesign,
 } from './protocol.ts';
@@ -18,6 +22,8 @@ export const COMPLETE_PERMUTATION_CONDITIONS_MAX = 7;
  *   two conditions and as many periods as conditions; orthogonal squares a prime power of them.
  * - A mirrored scheme has twice as many periods as its base, an extra-period one has one more.
  * - A design for two conditions has the periods that its name spells out.
+ * - A fraction of the permutations, random orders, orders under constraints and nested schemes have
+ *   as many periods as conditions. A nested scheme needs two within factors.
  * - A custom list may have more or fewer periods than conditions. A sequence may stand in it more
  *   than once: every row is handed out as often as every other, so a repeated row is replicated.
  *
@@ -45,6 +51,26 @@ export function schemeFaults(
       return [
         ...baseFaults(scheme.base, conditionCount, '/scheme/base'),
         ...periodFaults('an extra-period scheme', conditionCount + 1, conditionCount, periods),
+      ];
+    case 'permutation-fraction':
+      return [
+        ...fractionFaults(scheme.squares, conditionCount),
+        ...equalPeriodFaults(scheme.kind, conditionCount, periods),
+      ];
+    case 'random-permutations':
+      return [
+        ...randomFaults(scheme, conditionCount),
+        ...equalPeriodFaults(scheme.kind, conditionCount, periods),
+      ];
+    case 'constrained-permutations':
+      return [
+        ...constrainedFaults(scheme.constraints, conditionKeys),
+        ...equalPeriodFaults(scheme.kind, conditionCount, periods),
+      ];
+    case 'nested':
+      return [
+        ...nestedFaults(scheme, conditionKeys),
+        ...equalPeriodFaults(scheme.kind, conditionCount, periods),
       ];
     default:
       return [
@@ -74,6 +100,54 @@ function baseFaults(base: BaseScheme, conditionCount: number, pointer: string): 
     return [{ pointer, code: 'conditions-not-a-prime-power', message }];
   }
   return [];
+}
+
+function nestedFaults(scheme: NestedScheme, conditionKeys: readonly string[]): ProtocolFault[] {
+  const factorCount = withinFactorCount(conditionKeys);
+  const { blockedFactor } = scheme;
+  if (factorCount < 2) {
+    const message =
+      'A nested scheme needs two within factors, one for the blocks and one inside them; ' +
+      'with one factor a Williams design balances its levels';
+    return [{ pointer: '/scheme', code: 'scheme-needs-two-factors', message }];
+  }
+  if (!Number.isInteger(blockedFactor) || blockedFactor < 1 || blockedFactor > factorCount) {
+    const message = `The within factors are 1 to ${factorCount}, not ${blockedFactor}`;
+    return [{ pointer: '/scheme/blockedFactor', code: 'unknown-factor', message }];
+  }
+  const groups = conditionBlocks(conditionKeys, blockedFactor);
+  const size = groups[0]?.length ?? 0;
+  const faults = [
+    ...baseFaults(scheme.blocks, groups.length, '/scheme/blocks'),
+    ...baseFaults(scheme.insideBlocks, size, '/scheme/insideBlocks'),
+  ];
+  if (faults.length > 0) return faults;
+  const outer = sequenceCount(scheme.blocks, groups.length);
+  const inner = sequenceCount(scheme.insideBlocks, size);
+  if (outer * inner > SEQUENCES_MAX) {
+    const message =
+      `${outer} orders of blocks with ${inner} orders inside them are ${outer * inner} ` +
+      `sequences, more than ${SEQUENCES_MAX}; a cyclic or Williams square has fewer`;
+    faults.push({ pointer: '/scheme', code: 'too-many-sequences', message });
+  }
+  return faults;
+}
+
+/** How many sequences a base has; it must be one that can be built. */
+function sequenceCount(base: BaseScheme, conditionCount: number): number {
+  switch (base) {
+    case 'complete-permutations': {
+      let orders = 1;
+      for (let factor = 2; factor <= conditionCount; factor += 1) orders *= factor;
+      return orders;
+    }
+    case 'cyclic-latin-square':
+      return conditionCount;
+    case 'williams':
+      return conditionCount % 2 === 0 ? conditionCount : 2 * conditionCount;
+    case 'orthogonal-latin-squares':
+      return conditionCount * (conditionCount - 1);
+  }
 }
 
 function equalPeriodFaults(kind: string, conditionCount: number, periods: number): ProtocolFault[] {

@@ -46,6 +46,15 @@ export type SchemeChoice =
   /** Each sequence of the base with its last condition once more: strongly balanced. */
   | { readonly kind: 'extra-period'; readonly base: CarryoverBalancedScheme }
   | { readonly kind: 'two-conditions'; readonly design: TwoConditionDesign }
+  /** Some squares of the complete permutations: more orders than Williams, as well balanced. */
+  | { readonly kind: 'permutation-fraction'; readonly squares: number }
+  /** Every order of the conditions that meets the constraints. */
+  | {
+      readonly kind: 'constrained-permutations';
+      readonly constraints: readonly OrderConstraint[];
+    }
+  | RandomPermutations
+  | NestedScheme
   | { readonly kind: 'custom-list'; readonly sequences: readonly (readonly string[])[] };
 
 /** Schemes in which every sequence presents every condition once. */
@@ -56,6 +65,57 @@ export type CarryoverBalancedScheme =
   | 'complete-permutations'
   | 'williams'
   | 'orthogonal-latin-squares';
+
+/**
+ * Orders drawn at random, each independently of the others. The seed is registered, so that the
+ * protocol fixes the list, and with it the generator by which the list is drawn again.
+ */
+export interface RandomPermutations {
+  readonly kind: 'random-permutations';
+  /** How many orders are drawn. */
+  readonly count: number;
+  /** 16 lower-case hexadecimal digits. */
+  readonly seed: string;
+  readonly generator: { readonly name: string; readonly version: number };
+}
+
+/**
+ * Nested counterbalancing: the levels of one within factor are run in blocks, in counterbalanced
+ * order; inside the blocks the conditions that differ in the other factors are counterbalanced.
+ */
+export interface NestedScheme {
+  readonly kind: 'nested';
+  /** Place of the factor that is run in blocks among the within factors, from 1. */
+  readonly blockedFactor: number;
+  /** Orders of the blocks. */
+  readonly blocks: BaseScheme;
+  /** Orders inside a block. */
+  readonly insideBlocks: BaseScheme;
+}
+
+/**
+ * What an order must not do. Conditions are keys, periods are counted from 1.
+ * - `never-in-periods`: the condition stands in none of these periods;
+ * - `always-in-periods`: the condition stands in these periods alone;
+ * - `never-adjacent`: neither condition immediately after the other;
+ * - `never-in-order`: `second` never immediately after `first`;
+ * - `familiarisation-first`: the condition stands in period 1, and in no other.
+ */
+export type OrderConstraint =
+  | {
+      readonly kind: 'never-in-periods' | 'always-in-periods';
+      readonly condition: string;
+      readonly periods: readonly number[];
+    }
+  | {
+      readonly kind: 'never-adjacent' | 'never-in-order';
+      readonly first: string;
+      readonly second: string;
+    }
+  | { readonly kind: 'familiarisation-first'; readonly condition: string };
+
+/** No scheme has more sequences than this, which is 7!, the largest complete set of orders. */
+export const SEQUENCES_MAX = 5040;
 
 /** Designs for two conditions, named by their sequences; a is the protocol's first condition. */
 export const TWO_CONDITION_DESIGNS = [

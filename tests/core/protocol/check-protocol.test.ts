@@ -27,6 +27,20 @@ describe('a valid protocol', () => {
         ];
       },
     ],
+    'may nest one factor in the other': [
+      (p) => {
+        const base = 'williams';
+        p.scheme = { kind: 'nested', blockedFactor: 2, blocks: base, insideBlocks: base };
+      },
+    ],
+    'may constrain the orders': [
+      (p) => {
+        const constraints = [
+          { kind: 'never-adjacent' as const, first: 'cold.open', second: 'warm.open' },
+        ];
+        p.scheme = { kind: 'constrained-permutations', constraints };
+      },
+    ],
     'may repeat the last condition': [
       (p) => {
         p.scheme = { kind: 'extra-period', base: 'orthogonal-latin-squares' };
@@ -153,6 +167,56 @@ describe('faults of the scheme', () => {
         p.exclusions = [];
       },
       [`${a}/0/method`, 'method-needs-every-condition'],
+    ],
+    'more squares than there are': [
+      (p) => (p.scheme = { kind: 'permutation-fraction', squares: 7 }),
+      ['/scheme/squares', 'unusable-square-count'],
+    ],
+    'random orders without a usable count, seed and generator': [
+      (p) => {
+        const generator = { name: 'philox4x32-10', version: 2 };
+        p.scheme = { kind: 'random-permutations', count: 0, seed: 'twelve', generator };
+      },
+      ['/scheme/count', 'unusable-sequence-count'],
+      ['/scheme/seed', 'malformed-seed'],
+      ['/scheme/generator', 'unknown-generator'],
+    ],
+    'constraints that name what is not there': [
+      (p) => {
+        const constraints = [
+          { kind: 'never-in-periods' as const, condition: 'warm', periods: [0, 4, 5] },
+          { kind: 'never-adjacent' as const, first: 'warm.open', second: 'warm.open' },
+        ];
+        p.scheme = { kind: 'constrained-permutations', constraints };
+      },
+      ['/scheme/constraints/0/condition', 'unknown-condition'],
+      ['/scheme/constraints/0/periods/0', 'unknown-period'],
+      ['/scheme/constraints/0/periods/2', 'unknown-period'],
+      ['/scheme/constraints/1/second', 'condition-beside-itself'],
+    ],
+    'constraints that contradict each other': [
+      (p) => {
+        const constraints = [
+          { kind: 'never-in-order' as const, first: 'cold.open', second: 'warm.open' },
+          { kind: 'familiarisation-first' as const, condition: 'warm.open' },
+          { kind: 'always-in-periods' as const, condition: 'cold.open', periods: [1] },
+        ];
+        p.scheme = { kind: 'constrained-permutations', constraints };
+      },
+      ['/scheme/constraints', 'contradictory-constraints'],
+    ],
+    'nested scheme with one factor': [
+      (p) => {
+        p.withinFactors = p.withinFactors.slice(0, 1);
+        p.withinFactors[0]!.levels.push({ key: 'cool', label: 'cool' });
+        p.periods.count = 3;
+        p.periods.visits = [[1, 2, 3]];
+        p.exclusions.pop();
+        p.analysis.measures[0]!.contrasts = { kind: 'all-pairs' };
+        const base = 'williams';
+        p.scheme = { kind: 'nested', blockedFactor: 1, blocks: base, insideBlocks: base };
+      },
+      ['/scheme', 'scheme-needs-two-factors'],
     ],
     'empty custom list': [
       (p) => (p.scheme = { kind: 'custom-list', sequences: [] }),
@@ -281,6 +345,23 @@ describe('the message of a scheme fault', () => {
     [{ kind: 'extra-period', base: 'williams' }, 3, 3, /has 4 periods, but the protocol has 3/],
     [{ kind: 'two-conditions', design: 'ab-ba' }, 2, 3, /with 3: abb-baa, aba-bab, aab-bba/],
     [{ kind: 'two-conditions', design: 'ab-ba' }, 2, 5, /two conditions have 2, 3 or 4/],
+    [{ kind: 'permutation-fraction', squares: 13 }, 5, 5, /1 to 12 pairs of squares, not 13/],
+    [{ kind: 'constrained-permutations', constraints: [] }, 8, 8, /More than 5040.*custom list/],
+    [{ kind: 'constrained-permutations', constraints: [] }, 10, 10, /at most 9.*custom list/],
+    [
+      {
+        kind: 'constrained-permutations',
+        constraints: [
+          { kind: 'never-in-order', first: 'c0', second: 'c1' },
+          { kind: 'always-in-periods', condition: 'c0', periods: [1, 2] },
+          { kind: 'always-in-periods', condition: 'c1', periods: [1, 2] },
+          { kind: 'always-in-periods', condition: 'c2', periods: [2] },
+        ],
+      },
+      3,
+      3,
+      /together: number 2, number 3, number 4; leave one of them out/,
+    ],
   ] as const)('says what would work: %j', (scheme, count, periods, message) => {
     const faults = schemeFaults(scheme, keys(count), periods);
     expect(faults.map((fault) => fault.message).join()).toMatch(message);

@@ -45,6 +45,10 @@ const SCHEMES: { readonly [Kind in Protocol['scheme']['kind']]: string } = {
   mirrored: 'each sequence followed by its mirror image',
   'extra-period': 'last condition repeated in an extra period',
   'two-conditions': 'design for two conditions',
+  'permutation-fraction': 'balanced fraction of the complete permutations',
+  'random-permutations': 'independent random orders from a registered seed',
+  'constrained-permutations': 'every order that meets the constraints of the protocol',
+  nested: 'the levels of one factor in blocks, the others counterbalanced inside them',
   'custom-list': 'a list of sequences given in the protocol',
 };
 
