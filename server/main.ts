@@ -8,6 +8,7 @@ import { type Database, openDatabase } from '#platform/database.ts';
 import { startEmbeddedPostgres } from '#platform/embedded-postgres.ts';
 import { FolderLockedError } from '#platform/folder-lock.ts';
 import { createLogger } from '#platform/logging.ts';
+import { collectEarly } from '#platform/memory.ts';
 import { MigrationError, migrate } from '#platform/migrations.ts';
 import { EmbeddedPostgresError } from '#platform/postgres-programs.ts';
 import { startWorkerProcesses } from '#platform/worker-processes.ts';
@@ -45,6 +46,7 @@ const UNAVAILABLE = ['EADDRINUSE', 'EADDRNOTAVAIL', 'EACCES', 'ENOTFOUND'];
 const IDLE_CHECK_MS = 100;
 const DATABASE_CLOSE_MS_MAX = 2000;
 
+collectEarly();
 await run();
 
 async function run(): Promise<void> {

@@ -19,8 +19,8 @@ export interface CheckedTrial {
   /** `out-of-range:<measure>` in protocol order, `period-not-reached`. */
   readonly flags: readonly string[];
   /** As stored: of a binary measure true or false, of any other a number. */
-  readonly values: { readonly [measure: string]: number | boolean };
-  readonly missing: { readonly [measure: string]: string };
+  readonly values: ReadonlyMap<string, number | boolean>;
+  readonly missing: ReadonlyMap<string, string>;
 }
 
 const REASON_CODE_MAX = 40;
@@ -39,8 +39,7 @@ export function checkTrial(
   placeFaults(fields, rules, faults);
   timeFaults(fields, faults);
   const flags: string[] = [];
-  const values: { [measure: string]: number | boolean } = {};
-  const missing: { [measure: string]: string } = {};
+  const values = new Map<string, number | boolean>();
   const expected = fields.repetition === 1 ? rules.expectedFirst : rules.expectedLater;
   let known = 0;
   for (const measure of expected) {
@@ -52,12 +51,10 @@ export function checkTrial(
     if (fault !== null) {
       faults.push(fault);
     } else if (given !== undefined) {
-      values[measure.key] = measure.scale === 'binary' ? Boolean(given) : Number(given);
+      values.set(measure.key, measure.scale === 'binary' ? Boolean(given) : Number(given));
       if (isOutOfRange(measure, given)) flags.push(`out-of-range:${measure.key}`);
       const lacking = exposureFault(measure, fields, expected);
       if (lacking !== null) faults.push(lacking);
-    } else if (reason !== undefined) {
-      missing[measure.key] = reason;
     }
   }
   if (known < fields.values.size + fields.missing.size) strangeFaults(fields, rules, faults);
@@ -65,7 +62,7 @@ export function checkTrial(
     flags.push('period-not-reached');
   }
   const deviation = owner.sequence[fields.period - 1] !== fields.condition;
-  return { faults, deviation, flags, values, missing };
+  return { faults, deviation, flags, values, missing: fields.missing };
 }
 
 function placeFaults(fields: TrialFields, rules: TrialRules, faults: RowFault[]): void {

@@ -81,9 +81,10 @@ async function correct(
   }
   const registered = await registeredProtocol(executor, study.id, participant.protocolVersion);
   const fields = fieldsOf(merged(body, parseContent(before.content)));
-  const checked = checkTrial(fields, participant, trialRules(registered));
+  const rules = trialRules(registered);
+  const checked = checkTrial(fields, participant, rules);
   requireFaultless(checked.faults);
-  const content = contentText(fields, checked);
+  const content = contentText(fields, checked, rules);
   if (content === before.content) {
     throw new ProblemError('correction-not-possible', 'The trial reads so already.');
   }

@@ -55,6 +55,7 @@ export function csvSplitter(): RowSplitter {
         if (after === null) skipping = true;
         rest = after ?? Buffer.alloc(0);
       }
+      rest = Buffer.from(rest);
       return rows;
     },
     end() {

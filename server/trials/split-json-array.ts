@@ -95,7 +95,7 @@ class JsonArraySplitter implements RowSplitter {
 
   #keep(part: Buffer): void {
     if (part.length === 0 || this.#restLength > ROW_BYTES_MAX) return;
-    this.#rest.push(part);
+    this.#rest.push(Buffer.from(part));
     this.#restLength += part.length;
   }
 }

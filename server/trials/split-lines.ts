@@ -28,7 +28,7 @@ export function lineSplitter(): RowSplitter {
         take(bytes.subarray(start, end), rows);
         start = end + 1;
       }
-      rest = bytes.subarray(start);
+      rest = Buffer.from(bytes.subarray(start));
       if (rest.length > ROW_BYTES_MAX + 1) {
         if (!skipping) rows.push(rawRow(rest));
         skipping = true;

@@ -7,7 +7,10 @@ import { ProblemError } from '#platform/problems.ts';
 /** A body received whole, on disk, so that it can be read again when a transaction is retried. */
 export interface Spool {
   readonly sha256: string;
-  /** The bytes from the start, without a byte order mark; may be called again. */
+  /**
+   * The bytes from the start, without a byte order mark; may be called again. A chunk is valid until
+   * the next one is asked for.
+   */
   read(): AsyncIterable<Buffer>;
   close(): Promise<void>;
 }
@@ -63,9 +66,10 @@ async function* brokenOff(body: AsyncIterable<Buffer>): AsyncGenerator<Buffer> {
   }
 }
 
+/** Every chunk lies in the same memory: it is the reader's until it asks for the next. */
 async function* chunksOf(file: FileHandle): AsyncGenerator<Buffer> {
+  const chunk = Buffer.allocUnsafe(CHUNK_BYTES);
   for (let position = 0; ; ) {
-    const chunk = Buffer.allocUnsafe(CHUNK_BYTES);
     const { bytesRead } = await file.read(chunk, 0, CHUNK_BYTES, position);
     if (bytesRead === 0) return;
     const isMarked = position === 0 && chunk.subarray(0, 3).equals(BYTE_ORDER_MARK);

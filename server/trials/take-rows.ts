@@ -174,7 +174,7 @@ export class UploadRun {
       place: { participantId: owner.participant.id, period, repetition },
       deviation: checked.deviation,
       flags: checked.flags,
-      content: contentText(fields, checked),
+      content: contentText(fields, checked, owner.rules),
     };
   }
 

@@ -9,6 +9,8 @@ export interface TrialRules {
   /** Measures that a record of repetition 1 has, and those that every other has. */
   readonly expectedFirst: readonly Measure[];
   readonly expectedLater: readonly Measure[];
+  /** Measure keys by UTF-16 code units, as canonical JSON orders them. */
+  readonly keysInOrder: readonly string[];
 }
 
 export function trialRules(registered: {
@@ -23,5 +25,6 @@ export function trialRules(registered: {
     measures: new Map(measures.map((measure) => [measure.key, measure])),
     expectedFirst: measures,
     expectedLater: measures.filter(({ taken }) => taken === 'each-trial'),
+    keysInOrder: measures.map(({ key }) => key).sort(),
   };
 }

@@ -10,7 +10,7 @@ export function momentOf(text: string): number | null {
   const match = ISO_8601.exec(text);
   if (match === null) return null;
   const [, year, month, day] = match;
-  if (Number(day) > daysIn(Number(year), Number(month))) return null;
+  if (Number(day) > 28 && Number(day) > daysIn(Number(year), Number(month))) return null;
   const moment = Date.parse(text.replace(',', '.'));
   return Number.isNaN(moment) ? null : moment;
 }

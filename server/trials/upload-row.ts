@@ -14,7 +14,7 @@ export interface RawRow {
 
 /** Cuts a body into rows, wherever its chunks begin and end. */
 export interface RowSplitter {
-  /** Rows that this chunk completes. */
+  /** Rows that this chunk completes. The chunk may be overwritten afterwards. */
   push(chunk: Buffer): RawRow[];
   /** What is left at the end of the body. */
   end(): RawRow[];

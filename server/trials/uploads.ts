@@ -24,7 +24,7 @@ export interface UploadRequest {
 }
 
 /** What is checked and stored together: so many rows, or fewer when they are long. */
-const BATCH = { rows: 2000, characters: 4_000_000 };
+const BATCH = { rows: 1000, characters: 4_000_000 };
 
 /** A million rows of the usual size; more come as several uploads. */
 export const UPLOAD_BYTES_MAX = 512 * 1024 * 1024;
