@@ -116,7 +116,7 @@ async function timedUpload(
     headers: { ...study.stationHeaders, 'content-type': mediaType },
     body: new Uint8Array(body),
   });
-  const upload = await answer.json();
+  const upload = (await answer.json()) as { id: string; accepted: number };
   const seconds = (performance.now() - before) / 1000;
   if (answer.status !== 201) throw new Error(JSON.stringify(upload).slice(0, 1000));
   return { seconds, uploadId: upload.id, accepted: upload.accepted };

@@ -11,7 +11,7 @@ import { cloneDatabase } from './database.ts';
 /** Requests of one token, with the operator code that stations need. */
 export interface Caller {
   get(url: string, headers?: Record<string, string>): Promise<Response>;
-  post(url: string, body?: object, headers?: Record<string, string>): Promise<Response>;
+  post(url: string, body?: object | string, headers?: Record<string, string>): Promise<Response>;
   put(url: string, body: object, headers?: Record<string, string>): Promise<Response>;
 }
 

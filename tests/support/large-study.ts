@@ -31,20 +31,32 @@ export interface LargeRow {
 
 const PERIODS = 4;
 
+/** What of the answers to the setting up is needed. */
+interface Made {
+  readonly id: string;
+  readonly token: string;
+  readonly participant: { readonly id: string; readonly code: string };
+  readonly periods: readonly { readonly condition: { readonly key: string } }[];
+}
+
 /** The example protocol with so many repetitions in each of its four periods. */
 export async function largeStudy(
   url: string,
   administrator: string,
   options: { readonly repetitions: number; readonly targetEnrolment: number },
 ): Promise<LargeStudy> {
-  const post = async (path: string, body: object, headers: Record<string, string>) => {
+  const post = async (
+    path: string,
+    body: object,
+    headers: Record<string, string>,
+  ): Promise<Made> => {
     const answer = await fetch(`${url}${path}`, {
       method: 'POST',
       headers: { 'content-type': 'application/json', ...headers },
       body: JSON.stringify(body),
     });
     if (!answer.ok) throw new Error(`${path}: ${answer.status} ${await answer.text()}`);
-    return await answer.json();
+    return (await answer.json()) as Made;
   };
   const asAdministrator = bearer(administrator);
   const lab = await post('/v1/labs', { name: 'Cold lab' }, asAdministrator);
@@ -87,8 +99,7 @@ export async function largeStudy(
         const arrival = { kind: 'new', stratum: { shift: index % 2 === 0 ? 'early' : 'late' } };
         const key = { 'idempotency-key': crypto.randomUUID() };
         const answer = await post(`${base}/arrivals`, arrival, { ...stationHeaders, ...key });
-        const periods: { condition: { key: string } }[] = answer.periods;
-        const conditions = periods.map(({ condition }) => condition.key);
+        const conditions = answer.periods.map(({ condition }) => condition.key);
         arrived.push({ ...answer.participant, conditions });
       }
       return arrived;
