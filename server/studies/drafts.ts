@@ -1,3 +1,4 @@
+import { planContrastFaults } from '#core/designs/plan-contrasts.ts';
 import { canonicalJson } from '#core/hashing/canonical-json.ts';
 import { sha256Hex } from '#core/hashing/digest.ts';
 import { checkProtocol } from '#core/protocol/check-protocol.ts';
@@ -90,7 +91,7 @@ export async function protocolFaults(
   tx: RecordsTransaction,
   protocol: ProtocolDocument,
 ): Promise<ProtocolFault[]> {
-  const faults = checkProtocol(protocol);
+  const faults = [...checkProtocol(protocol), ...planContrastFaults(protocol)];
   const ids = protocol.sites.map((site) => site.siteId);
   const known = new Set((await findSites(tx, ids)).map((site) => site.id));
   for (const [index, id] of ids.entries()) {

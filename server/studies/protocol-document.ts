@@ -67,6 +67,15 @@ export const SchemeChoice = z
       .describe('Named by its sequences; a is the first condition'),
     z
       .strictObject({
+        kind: z.literal('balanced-incomplete-blocks'),
+        carryoverBalanced: z.boolean().describe('Whether immediate succession is balanced too'),
+      })
+      .describe(
+        'Fewer periods than conditions; every two conditions meet in equally many sequences. With ' +
+          'as many sequences as conditions it is a Youden square',
+      ),
+    z
+      .strictObject({
         kind: z.literal('permutation-fraction'),
         squares: z.int().describe('Williams squares; pairs of them for odd numbers of conditions'),
       })

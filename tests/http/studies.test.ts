@@ -197,6 +197,24 @@ describe('registering', () => {
     expect((await places.lead.get(pathOf(studyId))).body.state).toBe('draft');
   });
 
+  it('refuses a plan whose comparisons the sequences cannot make', async () => {
+    const protocol = coldStoreProtocol(places);
+    const row = ['none', 'silk', 'merino', 'fleece'];
+    protocol.scheme = { kind: 'custom-list', sequences: [row] };
+    const studyId = await draftStudy(places.lead, protocol);
+    const check = await places.lead.post(pathOf(studyId, '/protocol-draft/check'));
+    const adjusted = protocol.analysis.measures.flatMap(({ primaryEstimate }, index) =>
+      primaryEstimate === 'adjusted-for-period' ? [`/analysis/measures/${index}/contrasts`] : [],
+    );
+    expect(adjusted).not.toEqual([]);
+    // By hand: in a single order condition and period are one and the same.
+    const found = check.body.faults.map(({ pointer, code }: Record<string, string>) => [
+      pointer,
+      code,
+    ]);
+    expect(found).toEqual(adjusted.map((pointer) => [pointer, 'contrast-not-estimable']));
+  });
+
   it('fixes the version, publishes its hash and opens enrolment, once a key', async () => {
     const protocol = coldStoreProtocol(places);
     const studyId = await draftStudy(places.lead, protocol);
@@ -393,6 +411,39 @@ describe('a scheme preview', () => {
       periods: 4,
     });
     expect([refused.status, refused.body.type]).toEqual([400, '/problems/invalid-request']);
+  });
+
+  it('builds incomplete blocks and constrained, nested and random orders', async () => {
+    const preview = (scheme: object, levels: string[], periods: number) =>
+      places.lead.post('/v1/scheme-previews', { withinFactors: factor(levels), scheme, periods });
+    const seven = ['a', 'b', 'c', 'd', 'e', 'f', 'g'];
+    const incomplete = { kind: 'balanced-incomplete-blocks', carryoverBalanced: false };
+    const youden = await preview(incomplete, seven, 3);
+    // published: Cochran & Cox, Experimental Designs, §9.3: t = b = 7, k = r = 3, λ = 1, E = 7/9
+    expect([youden.status, youden.body.participantsPerBlock]).toEqual([200, 7]);
+    expect(youden.body.efficiency.direct.efficiency).toBeCloseTo(7 / 9, 12);
+    const seed = '00000000000000ff';
+    const generator = { name: 'philox4x32-10', version: 1 };
+    const random = { kind: 'random-permutations', count: 9, seed, generator };
+    const drawn = await preview(random, seven, 7);
+    expect([drawn.status, drawn.body.sequences.length]).toEqual([200, 9]);
+    const first = { kind: 'familiarisation-first', condition: 'b' };
+    const constrained = { kind: 'constrained-permutations', constraints: [first] };
+    const orders = await preview(constrained, ['a', 'b', 'c'], 3);
+    expect(
+      orders.body.sequences.map(({ conditions }: { conditions: string[] }) => conditions),
+    ).toEqual([
+      ['b', 'a', 'c'],
+      ['b', 'c', 'a'],
+    ]);
+    const nested = {
+      kind: 'nested',
+      blockedFactor: 1,
+      blocks: 'williams',
+      insideBlocks: 'williams',
+    };
+    const one = await preview(nested, ['a', 'b', 'c'], 3);
+    expect([one.status, one.body.faults[0].code]).toEqual([422, 'scheme-needs-two-factors']);
   });
 
   it('says which conditions the sequences cannot compare', async () => {

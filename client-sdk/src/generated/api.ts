@@ -1652,6 +1652,11 @@ export interface components {
             design: "ab-ba" | "aa-bb-ab-ba" | "abb-baa" | "aba-bab" | "aab-bba" | "abb-baa-aba-bab" | "abb-baa-aab-bba" | "aab-bba-aba-bab" | "abab-baba" | "aabb-bbaa" | "abba-baab" | "aabb-bbaa-abba-baab";
         } | {
             /** @constant */
+            kind: "balanced-incomplete-blocks";
+            /** @description Whether immediate succession is balanced too */
+            carryoverBalanced: boolean;
+        } | {
+            /** @constant */
             kind: "permutation-fraction";
             /** @description Williams squares; pairs of them for odd numbers of conditions */
             squares: number;

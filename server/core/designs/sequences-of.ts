@@ -7,6 +7,7 @@ import { constrainedPermutations } from './constrained-permutations.ts';
 import { customList } from './custom-list.ts';
 import { cyclicLatinSquare } from './cyclic-latin-square.ts';
 import { withExtraPeriod } from './extra-period.ts';
+import { incompleteBlocks } from './incomplete-blocks.ts';
 import { mirrored } from './mirrored.ts';
 import { nested } from './nested.ts';
 import { orthogonalLatinSquares } from './orthogonal-latin-squares.ts';
@@ -39,6 +40,8 @@ export function sequencesOf(
       return withExtraPeriod(baseSequences(scheme.base, conditionCount));
     case 'two-conditions':
       return twoConditionSequences(scheme.design);
+    case 'balanced-incomplete-blocks':
+      return incompleteBlocks(conditionCount, periods, scheme.carryoverBalanced);
     case 'permutation-fraction':
       return permutationFraction(conditionCount, scheme.squares);
     case 'random-permutations':

@@ -26,10 +26,11 @@ export function analysisFaults(
       const message = `No measure is "${plan.measure}"`;
       faults.push({ pointer: `${pointer}/measure`, code: 'unknown-measure', message });
     }
-    if (!meetsAll) {
+    if (!meetsAll && !usesIncompleteParticipants(plan)) {
       const message =
-        `${plan.method} compares conditions within participants who meet all of them, ` +
-        'and some sequence leaves one out';
+        `${plan.method} with the primary estimate ${plan.primaryEstimate} compares conditions ` +
+        'within participants who meet all of them, and some sequence leaves one out; ' +
+        'repeated-measures-anova with the primary estimate adjusted-for-period uses everybody';
       const code = 'method-needs-every-condition';
       faults.push({ pointer: `${pointer}/method`, code, message });
     }
@@ -44,6 +45,11 @@ export function analysisFaults(
     }
   }
   return faults;
+}
+
+/** The fit adjusted for period uses every observation; everything else needs whole participants. */
+function usesIncompleteParticipants({ method, primaryEstimate }: MeasurePlan): boolean {
+  return method === 'repeated-measures-anova' && primaryEstimate === 'adjusted-for-period';
 }
 
 /** Which measures are planned: each once, one at least as primary. */

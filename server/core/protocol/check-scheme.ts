@@ -1,5 +1,6 @@
 import { primePower } from '../numerics/finite-field.ts';
 import { customListFaults } from './check-custom-list.ts';
+import { incompleteFaults } from './check-incomplete-scheme.ts';
 import { constrainedFaults, fractionFaults, randomFaults } from './check-permutation-schemes.ts';
 import { conditionBlocks, withinFactorCount } from './condition-blocks.ts';
 import type { ProtocolFault } from './fault.ts';
@@ -22,6 +23,7 @@ export const COMPLETE_PERMUTATION_CONDITIONS_MAX = 7;
  *   two conditions and as many periods as conditions; orthogonal squares a prime power of them.
  * - A mirrored scheme has twice as many periods as its base, an extra-period one has one more.
  * - A design for two conditions has the periods that its name spells out.
+ * - Balanced incomplete blocks have fewer periods than conditions.
  * - A fraction of the permutations, random orders, orders under constraints and nested schemes have
  *   as many periods as conditions. A nested scheme needs two within factors.
  * - A custom list may have more or fewer periods than conditions. A sequence may stand in it more
@@ -52,6 +54,8 @@ export function schemeFaults(
         ...baseFaults(scheme.base, conditionCount, '/scheme/base'),
         ...periodFaults('an extra-period scheme', conditionCount + 1, conditionCount, periods),
       ];
+    case 'balanced-incomplete-blocks':
+      return incompleteFaults(scheme.carryoverBalanced, conditionCount, periods);
     case 'permutation-fraction':
       return [
         ...fractionFaults(scheme.squares, conditionCount),
@@ -219,6 +223,8 @@ export function meetsEveryCondition(
       );
     case 'two-conditions':
       return scheme.design.split('-').every((row) => row.includes('a') && row.includes('b'));
+    case 'balanced-incomplete-blocks':
+      return false;
     default:
       return true;
   }

@@ -46,6 +46,8 @@ export type SchemeChoice =
   /** Each sequence of the base with its last condition once more: strongly balanced. */
   | { readonly kind: 'extra-period'; readonly base: CarryoverBalancedScheme }
   | { readonly kind: 'two-conditions'; readonly design: TwoConditionDesign }
+  /** Fewer periods than conditions; every two conditions meet in equally many sequences. */
+  | { readonly kind: 'balanced-incomplete-blocks'; readonly carryoverBalanced: boolean }
   /** Some squares of the complete permutations: more orders than Williams, as well balanced. */
   | { readonly kind: 'permutation-fraction'; readonly squares: number }
   /** Every order of the conditions that meets the constraints. */

@@ -240,6 +240,7 @@ describe('faults of the scheme', () => {
           ],
         };
         p.analysis.measures = p.analysis.measures.slice(0, 1);
+        p.analysis.measures[0]!.primaryEstimate = 'unadjusted';
         p.measures = p.measures.slice(0, 1);
         p.exclusions = [];
       },

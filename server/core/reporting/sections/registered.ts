@@ -45,6 +45,7 @@ const SCHEMES: { readonly [Kind in Protocol['scheme']['kind']]: string } = {
   mirrored: 'each sequence followed by its mirror image',
   'extra-period': 'last condition repeated in an extra period',
   'two-conditions': 'design for two conditions',
+  'balanced-incomplete-blocks': 'balanced incomplete blocks',
   'permutation-fraction': 'balanced fraction of the complete permutations',
   'random-permutations': 'independent random orders from a registered seed',
   'constrained-permutations': 'every order that meets the constraints of the protocol',
