@@ -1,4 +1,9 @@
 import { createHash, randomUUID } from 'node:crypto';
+import { once } from 'node:events';
+import { readdirSync } from 'node:fs';
+import { connect } from 'node:net';
+import { tmpdir } from 'node:os';
+import { setTimeout as pause } from 'node:timers/promises';
 import { afterAll, beforeAll, describe, expect, it } from 'vitest';
 import { startTestService, type TestService } from '../support/app.ts';
 import {
@@ -239,6 +244,30 @@ describe('an upload with faults', () => {
     expect((await station().post(uploads(), 'a', zipped)).status).toBe(415);
     expect((await station().post(uploads())).status).toBeGreaterThanOrEqual(400);
     expect(await count()).toBe(before);
+  });
+});
+
+describe('an upload that breaks off', () => {
+  it('leaves nothing, neither stored nor on disk, and the service goes on', async () => {
+    const person = await arrive();
+    const url = new URL(await service.startInstance());
+    const spools = () =>
+      readdirSync(tmpdir()).filter((name) => name.startsWith('fairturn-upload-'));
+    const rows = `${JSON.stringify(rowOf(person, 1, 1))}\n`;
+    const socket = connect(Number(url.port), url.hostname);
+    await once(socket, 'connect');
+    socket.write(
+      `POST ${uploads()} HTTP/1.1\r\nhost: ${url.host}\r\noperator-code: op-1\r\n` +
+        `authorization: Bearer ${places.harbour.stationTokens[0]}\r\n` +
+        `content-type: application/x-ndjson\r\ncontent-length: 100000\r\n\r\n${rows}`,
+    );
+    await pause(200);
+    expect(spools()).toEqual([]);
+    socket.destroy();
+    await pause(200);
+    expect(await storedOf(person)).toEqual([]);
+    const whole = await upload(station(), studyId, [rowOf(person, 1, 1)]);
+    expect(whole.body).toMatchObject({ accepted: 1 });
   });
 });
 
