@@ -52,7 +52,7 @@ export function designEfficiency(
   return efficiencyOf(designInformation(sequences, conditionCount));
 }
 
-/** The part of {@link designEfficiency} without carryover in the model, at an eighth of its cost. */
+/** The part of {@link designEfficiency} without carryover in the model, much cheaper. */
 export function directEfficiency(
   sequences: readonly (readonly number[])[],
   conditionCount: number,

@@ -1,7 +1,7 @@
 /**
  * Each sequence with its last condition once more. From a set that is uniform on periods and
- * balanced for carryover this makes a strongly balanced one: every condition follows every condition
- * equally often, itself included, so that direct and carryover effects are orthogonal.
+ * balanced for carryover this makes a strongly balanced one: every condition follows every other
+ * and itself equally often, so that direct and carryover effects are orthogonal.
  * Source: Lucas 1957, Journal of Dairy Science 40:225–239; Patterson & Lucas 1959, Biometrics
  * 15:116–132.
  *

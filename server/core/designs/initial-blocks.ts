@@ -1,6 +1,6 @@
 /**
- * Initial blocks of incomplete designs, by conditions/periods: each entry of a block is one digit in
- * base 36, blocks are set apart by spaces. They were found by simulated annealing over ordered
+ * Initial blocks of incomplete designs, by conditions/periods: each entry of a block is one digit
+ * in base 36, blocks are set apart by spaces. They were found by simulated annealing over ordered
  * blocks, starting from the fewest that counting allows; the tests check all that they promise.
  * Never change an entry: the order of a scheme's sequences is its identity.
  */

@@ -10,8 +10,8 @@ import { williamsSquare } from './williams.ts';
  * squares have a row in common only when they are the same: they are left cosets of the
  * translations (n even), or of the translations and reflections (n odd, where the square comes with
  * its reverse). So the (n − 1)! squares, or (n − 1)!/2 pairs, share out the n! permutations. Each
- * coset has one π with π(0) = 0 (n odd: and π(1) < π(n − 1)); they are taken in lexicographic order,
- * the first of them being Williams' square itself.
+ * coset has one π with π(0) = 0 (n odd: and π(1) < π(n − 1)); they are taken in lexicographic
+ * order, the first of them being Williams' square itself.
  * Source: cosets of a subgroup, any algebra text; the fraction itself is common practice.
  *
  * @param conditionCount n ≥ 3

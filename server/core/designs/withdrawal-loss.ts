@@ -53,16 +53,17 @@ const EFFECTS = ['direct', 'directAdjusted', 'carryover'] as const;
  * with the replication of the complete design (see `designEfficiency`) over the average variance
  * that is left: it falls with the observations that are lost as well as with the balance.
  *
- * Participants with the same sequence are alike, so cases are counted by how many withdraw from each
- * sequence, with hypergeometric probability. When there are more than `casesMax` of them, that many
- * sets of participants are drawn instead; the worst is then the worst of those drawn.
+ * Participants with the same sequence are alike, so cases are counted by how many withdraw from
+ * each sequence, with hypergeometric probability. When there are more than `casesMax` of them, that
+ * many sets of participants are drawn instead; the worst is then the worst of those drawn.
  * Source of the question: Low, Lewis & Prescott 1999, Statistics and Computing 9:219–227.
  *
  * @param sequences      rows of equal length p ≥ 2 of condition indices
  * @param conditionCount t ≥ 2
  * @returns by number of withdrawals, then by period 1..p−1
- * @throws {DomainError} when an option is not a whole number of at least 1, more would withdraw than
- *   there are participants, sequences differ in length or have one period, or the seed is malformed
+ * @throws {DomainError} when an option is not a whole number of at least 1, more would withdraw
+ *   than there are participants, sequences differ in length or have one period, or the seed is
+ *   malformed
  */
 export function withdrawalLoss(
   sequences: readonly (readonly number[])[],

@@ -15,7 +15,7 @@ export function fractionFaults(squares: number, conditionCount: number): Protoco
   const most = squaresMax(conditionCount);
   if (isWholeFrom(1, squares) && squares <= most) return [];
   const unit = conditionCount % 2 === 0 ? 'squares' : 'pairs of squares';
-  const message = `With ${conditionCount} conditions there are 1 to ${most} ${unit}, not ${squares}`;
+  const message = `Of ${conditionCount} conditions there are 1 to ${most} ${unit}, not ${squares}`;
   return [{ pointer: '/scheme/squares', code: 'unusable-square-count', message }];
 }
 

@@ -1,6 +1,7 @@
 import fc from 'fast-check';
 import { describe, expect, it } from 'vitest';
 import { cyclicLatinSquare } from '#core/designs/cyclic-latin-square.ts';
+import { designProperties } from '#core/designs/design-properties.ts';
 import { type DesignEfficiency, designEfficiency } from '#core/designs/efficiency.ts';
 import {
   addSequenceInto,
@@ -11,6 +12,7 @@ import {
 import { williamsSquare } from '#core/designs/williams.ts';
 import { householderQr, linearCombination } from '#core/numerics/householder-qr.ts';
 import { matrixFromRows } from '#core/numerics/matrix.ts';
+import reference from '../../reference/design-efficiency.json' with { type: 'json' };
 
 /** Percentages with two decimals, as tables of efficiencies print them. */
 function percent(effect: DesignEfficiency[keyof DesignEfficiency]): string {
@@ -193,6 +195,35 @@ describe('efficiencies', () => {
     expect(() => designEfficiency([], 2)).toThrow(/at least one sequence/);
     expect(() => emptyInformationSums(0, 2)).toThrow(/conditionCount/);
     expect(() => addSequenceInto(emptyInformationSums(2, 1), [0, 1])).toThrow(/2 periods/);
+  });
+});
+
+describe.each(reference.cases)('against R: $name', (design) => {
+  // reference: R 4.2.2 with MASS, the model written out in full; tests/reference/design-efficiency.R
+  it.each(['direct', 'directAdjusted', 'carryover'] as const)('%s', (effect) => {
+    const { contrasts } = designEfficiency(design.sequences, design.conditionCount)[effect];
+    expect(contrasts).toHaveLength(design[effect].length);
+    for (const [index, { variance }] of contrasts.entries()) {
+      if (!variance.estimable) throw new Error(variance.detail);
+      // R's generalised inverse drops singular values below 1.5e-8 of the largest: agreement to
+      // nine digits is what it can be held to.
+      expect(Math.abs(variance.value / design[effect][index]! - 1)).toBeLessThan(1e-9);
+    }
+  });
+});
+
+describe('OrchardSprays', () => {
+  it('is recognised as a Latin square', () => {
+    // dataset: OrchardSprays (R datasets), whose manual page calls it a Latin square design
+    const square = reference.cases[0]!;
+    const properties = designProperties(square.sequences, 8);
+    expect(properties).toMatchObject({
+      periods: 8,
+      participantsPerBlock: 8,
+      uniformOnPeriods: true,
+      uniformWithinSequences: true,
+    });
+    expect(percent(designEfficiency(square.sequences, 8).direct)).toBe('100.00');
   });
 });
 

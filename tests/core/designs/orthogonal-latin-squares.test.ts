@@ -3,7 +3,7 @@ import { designProperties } from '#core/designs/design-properties.ts';
 import { designEfficiency } from '#core/designs/efficiency.ts';
 import { orthogonalLatinSquares } from '#core/designs/orthogonal-latin-squares.ts';
 
-const SIZES = [2, 3, 4, 5, 7, 8, 9, 11, 13, 16, 17, 19, 23, 25, 27, 29, 31, 32];
+const SIZES = [2, 3, 4, 5, 7, 8, 9, 11, 13, 16, 17, 19, 23, 25, 27, 29, 31, 32, 49, 61, 64];
 
 function squaresOf(size: number): number[][][] {
   const rows = orthogonalLatinSquares(size);

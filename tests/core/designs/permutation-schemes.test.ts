@@ -33,7 +33,7 @@ describe('fractions of the permutations', () => {
     expect(asSet(whole)).toEqual(asSet(every));
   });
 
-  it.each([3, 4, 5, 6, 7, 8, 9, 10, 15, 16])('are balanced for %i conditions', (size) => {
+  it.each([3, 4, 5, 6, 7, 8, 9, 10, 15, 16, 33, 64])('are balanced for %i conditions', (size) => {
     for (const squares of size === 3 ? [1] : [1, 2, 3, 5]) {
       const rows = permutationFraction(size, squares);
       const properties = designProperties(rows, size);

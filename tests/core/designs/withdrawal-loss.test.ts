@@ -115,7 +115,7 @@ describe('the loss under withdrawals', () => {
     }
   });
 
-  it('sampled is near the enumerated, the same for the same seed, and says that it is sampled', () => {
+  it('when sampled is near the enumerated, and the same for the same seed', () => {
     const rows = williamsSquare(5);
     const exact = withdrawalLoss(rows, 5, { blocks: 2, withdrawalsMax: 4, casesMax: 10_000, seed });
     const options = { blocks: 2, withdrawalsMax: 4, casesMax: 400, seed };

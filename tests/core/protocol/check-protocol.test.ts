@@ -346,7 +346,12 @@ describe('the message of a scheme fault', () => {
     [{ kind: 'extra-period', base: 'williams' }, 3, 3, /has 4 periods, but the protocol has 3/],
     [{ kind: 'two-conditions', design: 'ab-ba' }, 2, 3, /with 3: abb-baa, aba-bab, aab-bba/],
     [{ kind: 'two-conditions', design: 'ab-ba' }, 2, 5, /two conditions have 2, 3 or 4/],
-    [{ kind: 'permutation-fraction', squares: 13 }, 5, 5, /1 to 12 pairs of squares, not 13/],
+    [
+      { kind: 'permutation-fraction', squares: 13 },
+      5,
+      5,
+      /Of 5 conditions there are 1 to 12 pairs of squares, not 13/,
+    ],
     [{ kind: 'constrained-permutations', constraints: [] }, 8, 8, /More than 5040.*custom list/],
     [{ kind: 'constrained-permutations', constraints: [] }, 10, 10, /at most 9.*custom list/],
     [
