@@ -8,8 +8,8 @@ import { ProblemError } from '#platform/problems.ts';
 export interface Spool {
   readonly sha256: string;
   /**
-   * The bytes from the start, without a byte order mark; may be called again. A chunk is valid until
-   * the next one is asked for.
+   * The bytes from the start, without a byte order mark; may be called again. A chunk is valid
+   * until the next one is asked for.
    */
   read(): AsyncIterable<Buffer>;
   close(): Promise<void>;
@@ -19,8 +19,8 @@ const CHUNK_BYTES = 131_072;
 const BYTE_ORDER_MARK = Buffer.from([0xef, 0xbb, 0xbf]);
 
 /**
- * Receives a body into a file that has no name any more, so that nothing of it stays behind whatever
- * happens, and that nobody else can open. The database is asked for nothing meanwhile: a slow
+ * Receives a body into a file that has no name any more, so that nothing of it stays behind
+ * whatever happens, and that nobody else can open. The database is asked for nothing meanwhile: a slow
  * sender holds neither a connection nor a lock.
  *
  * @throws {ProblemError} `payload-too-large` above `bytesMax`; `invalid-request` when the sender

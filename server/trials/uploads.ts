@@ -79,8 +79,8 @@ async function taken(
 }
 
 /**
- * The kept answer says nothing of the bytes, since their hash could be guessed back to a value: what
- * tells whether a repeat has the same bytes is the hash of the upload, which can be erased.
+ * The kept answer says nothing of the bytes, since their hash could be guessed back to a value:
+ * what tells whether a repeat has the same bytes is the hash of the upload, which can be erased.
  */
 async function takeOnce(
   tx: SqlTransaction,
