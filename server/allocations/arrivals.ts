@@ -1,5 +1,5 @@
 import { randomBytes } from 'node:crypto';
-import { slotDraw } from '#core/allocation/keyed-draw.ts';
+import { keyedChance } from '#core/allocation/keyed-draw.ts';
 import { emptyLedger, issueNext, recordIssued } from '#core/allocation/ledger.ts';
 import { issueParticipantCode } from '#core/allocation/participant-code.ts';
 import { assert } from '#core/errors.ts';
@@ -20,6 +20,7 @@ import {
   studySites,
   takeSlotNumbers,
 } from '#server/studies/service.ts';
+import { allocationPlanOf } from './allocation-plan.ts';
 import {
   codeKeyOf,
   conditionAt,
@@ -240,15 +241,15 @@ async function issueSlot(
       throw new ProblemError('site-full', 'The site has issued all the slots that it planned.');
     }
   }
-  const { set } = registered;
-  const ledger = emptyLedger(set);
-  for (const row of await store.selectSequenceCounts(tx, studyId, cell.protocolVersion)) {
+  const { protocolVersion } = cell;
+  const secret = await allocationSecretOf(executor, studyId);
+  const plan = allocationPlanOf(registered);
+  const ledger = emptyLedger(plan, keyedChance({ secret, studyId, protocolVersion }));
+  for (const row of await store.selectSequenceCounts(tx, studyId, protocolVersion)) {
     recordIssued(ledger, { ...row, count: row.issued });
   }
   const { number, issueNumber } = await takeSlotNumbers(executor, studyId, siteId);
-  const secret = await allocationSecretOf(executor, studyId);
-  const draw = slotDraw({ secret, studyId, siteId, slotNumber: number });
-  const { sequenceIndex, drawsUsed } = issueNext(ledger, { siteId, stratum, draw });
+  const { sequenceIndex, drawsUsed } = issueNext(ledger, { siteId, stratum, slotNumber: number });
   const slot = {
     ...cell,
     id: uuidv7(),

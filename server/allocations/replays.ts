@@ -1,5 +1,5 @@
+import type { AllocationPlan } from '#core/allocation/ledger.ts';
 import { replayAllocations as replay } from '#core/allocation/replay.ts';
-import type { SequenceSet } from '#core/allocation/tally.ts';
 import { actorOf, type Call } from '#platform/call.ts';
 import { type Database, sqlExecutor } from '#platform/database.ts';
 import { ProblemError } from '#platform/problems.ts';
@@ -9,6 +9,7 @@ import {
   lockVisibleStudy,
   readRegisteredProtocol,
 } from '#server/studies/service.ts';
+import { allocationPlanOf } from './allocation-plan.ts';
 import type { ReplayResponse } from './schemas.ts';
 import * as store from './store-slots.ts';
 
@@ -30,15 +31,16 @@ export function replayAllocations(
     if (study.state !== 'closed' || secretHash === null || currentVersion === null) {
       throw new ProblemError('wrong-state', 'Allocations are replayed once the study is closed.');
     }
-    const sets = new Map<number, SequenceSet>();
+    const plans = new Map<number, AllocationPlan>();
     for (let number = 1; number <= currentVersion; number += 1) {
-      sets.set(number, (await readRegisteredProtocol(executor, study.id, number)).set);
+      const registered = await readRegisteredProtocol(executor, study.id, number);
+      plans.set(number, allocationPlanOf(registered));
     }
     const { verified, firstDifference } = replay({
       studyId: study.id,
       secret: await allocationSecretOf(executor, study.id),
       secretHash,
-      sets,
+      plans,
       slots: await store.selectSlots(tx, study.id),
       slotsIssued,
     });

@@ -198,7 +198,7 @@ export const BalanceResponse = z
       .describe('Condition keys by period; counts by sequence are in this order'),
     cells: z
       .array(z.strictObject({ siteId: z.uuid(), stratum: z.string(), ...counts }))
-      .describe('Site × stratum: planned counts differ by at most one'),
+      .describe('Site × stratum: planned counts differ by at most one under the policy balanced'),
     sites: z.array(
       z.strictObject({
         siteId: z.uuid(),

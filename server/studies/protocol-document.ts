@@ -71,8 +71,8 @@ export const SchemeChoice = z
         carryoverBalanced: z.boolean().describe('Whether immediate succession is balanced too'),
       })
       .describe(
-        'Fewer periods than conditions; every two conditions meet in equally many sequences. With ' +
-          'as many sequences as conditions it is a Youden square',
+        'Fewer periods than conditions; every two conditions meet in equally many sequences. ' +
+          'With as many sequences as conditions it is a Youden square',
       ),
     z
       .strictObject({
@@ -115,7 +115,20 @@ export const SchemeChoice = z
   .meta({ id: 'SchemeChoice', description: 'Where the sequences come from' });
 
 const PolicyChoice = z
-  .strictObject({ kind: z.literal('balanced') })
+  .discriminatedUnion('kind', [
+    z
+      .strictObject({ kind: z.literal('balanced') })
+      .describe('In each site × stratum, counts by sequence differ by at most one'),
+    z
+      .strictObject({
+        kind: z.literal('permuted-blocks'),
+        multiples: z
+          .array(z.int())
+          .max(ListMax)
+          .describe('How often each sequence stands in a block: one of these, drawn for each'),
+      })
+      .describe('In each site × stratum, counts differ by at most the largest of the multiples'),
+  ])
   .meta({ id: 'PolicyChoice', description: 'The rule by which sequences are handed out' });
 
 const ReplacementRule = z

@@ -978,7 +978,7 @@ export interface components {
             conditions: components["schemas"]["Condition"][];
             /** @description Condition keys by period; counts by sequence are in this order */
             sequences: string[][];
-            /** @description Site × stratum: planned counts differ by at most one */
+            /** @description Site × stratum: planned counts differ by at most one under the policy balanced */
             cells: {
                 /** Format: uuid */
                 siteId: string;
@@ -1431,6 +1431,11 @@ export interface components {
         PolicyChoice: {
             /** @constant */
             kind: "balanced";
+        } | {
+            /** @constant */
+            kind: "permuted-blocks";
+            /** @description How often each sequence stands in a block: one of these, drawn for each */
+            multiples: number[];
         };
         Problem: {
             /** @enum {string} */

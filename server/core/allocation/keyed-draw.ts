@@ -32,9 +32,7 @@ export function slotDraw(options: {
   readonly slotNumber: number;
 }): Draw {
   const { secret, studyId, siteId, slotNumber } = options;
-  if (secret.length !== SECRET_BYTES) {
-    throw new DomainError(`An allocation secret has ${SECRET_BYTES} bytes, not ${secret.length}`);
-  }
+  requireSecret(secret);
   if (!Number.isSafeInteger(slotNumber) || slotNumber < 1) {
     throw new DomainError(`Slot numbers run from 1, but this one is ${slotNumber}`);
   }
@@ -43,6 +41,43 @@ export function slotDraw(options: {
       secret,
       canonicalJson(['fairturn-allocation-1', studyId, siteId, slotNumber, drawNumber]),
     );
+}
+
+/** Where a study's allocations take their chance from. */
+export interface Chance {
+  /** The generator of one slot, see `slotDraw`. */
+  slot(siteId: string, slotNumber: number): Draw;
+  /** The generator of the size of one block of a cell: blocks are numbered from 1 in each. */
+  block(siteId: string, stratum: string, blockNumber: number): Draw;
+}
+
+/**
+ * The chance of one protocol version of a study: keyed by its secret, so that everything drawn can
+ * be drawn again. Slots as `slotDraw`; blocks likewise, over
+ * `["fairturn-block-1", studyId, siteId, protocolVersion, stratum, blockNumber, drawNumber]`.
+ *
+ * @throws {DomainError} as `slotDraw`, when a draw is asked for
+ */
+export function keyedChance(options: {
+  readonly secret: Uint8Array;
+  readonly studyId: string;
+  readonly protocolVersion: number;
+}): Chance {
+  const { secret, studyId, protocolVersion } = options;
+  return {
+    slot: (siteId, slotNumber) => slotDraw({ secret, studyId, siteId, slotNumber }),
+    block: (siteId, stratum, blockNumber) => {
+      requireSecret(secret);
+      const place = [studyId, siteId, protocolVersion, stratum, blockNumber];
+      return (drawNumber) =>
+        hmacSha256(secret, canonicalJson(['fairturn-block-1', ...place, drawNumber]));
+    },
+  };
+}
+
+function requireSecret(secret: Uint8Array): void {
+  if (secret.length === SECRET_BYTES) return;
+  throw new DomainError(`An allocation secret has ${SECRET_BYTES} bytes, not ${secret.length}`);
 }
 
 /** SHA-256 of the secret's bytes, hexadecimal: what is published when a study is registered. */

@@ -1,7 +1,15 @@
 import { DomainError } from '../errors.ts';
-import type { Draw } from './keyed-draw.ts';
+import type { PolicyChoice } from '../protocol/protocol.ts';
+import type { Chance } from './keyed-draw.ts';
 import { nextSequence } from './next-sequence.ts';
+import { type CompleteBlocks, NO_BLOCKS, nextInBlock, openBlock } from './permuted-blocks.ts';
 import { addToTally, emptyTally, type SequenceSet, type Tally } from './tally.ts';
+
+/** What one protocol version hands out, and by which rule. */
+export interface AllocationPlan {
+  readonly set: SequenceSet;
+  readonly policy: PolicyChoice;
+}
 
 /**
  * Counts of one protocol version's issued slots, kept up to date slot by slot, so that a batch of
@@ -9,12 +17,15 @@ import { addToTally, emptyTally, type SequenceSet, type Tally } from './tally.ts
  * `recordIssued` and `issueNext`.
  */
 export interface AllocationLedger {
-  readonly set: SequenceSet;
+  readonly plan: AllocationPlan;
+  readonly chance: Chance;
   /** By site, then by stratum. */
   readonly cells: Map<string, Map<string, Int32Array>>;
   readonly sites: Map<string, Tally>;
   readonly strata: Map<string, Tally>;
   readonly study: Tally;
+  /** Under permuted blocks: complete blocks by site and stratum, as far as they were needed. */
+  readonly blocks: Map<string, Map<string, CompleteBlocks>>;
 }
 
 /**
@@ -23,7 +34,8 @@ export interface AllocationLedger {
  * @throws {DomainError} when there are no sequences, they differ in length, or one holds something
  *   else than condition indices below conditionCount
  */
-export function emptyLedger(set: SequenceSet): AllocationLedger {
+export function emptyLedger(plan: AllocationPlan, chance: Chance): AllocationLedger {
+  const { set } = plan;
   const periods = set.sequences[0]?.length ?? 0;
   if (periods === 0) throw new DomainError('There are no sequences to hand out');
   for (const sequence of set.sequences) {
@@ -35,11 +47,13 @@ export function emptyLedger(set: SequenceSet): AllocationLedger {
     }
   }
   return {
-    set,
+    plan,
+    chance,
     cells: new Map(),
     sites: new Map(),
     strata: new Map(),
     study: emptyTally(set),
+    blocks: new Map(),
   };
 }
 
@@ -58,7 +72,7 @@ export function recordIssued(
     readonly count: number;
   },
 ): void {
-  const { set } = ledger;
+  const { set } = ledger.plan;
   const { siteId, stratum, sequenceIndex, count } = issued;
   addToTally(ledger.study, set, sequenceIndex, count);
   addToTally(tallyIn(ledger.sites, siteId, set), set, sequenceIndex, count);
@@ -67,27 +81,67 @@ export function recordIssued(
   cell[sequenceIndex] = (cell[sequenceIndex] ?? 0) + count;
 }
 
+/** Who the next slot is for. */
+export interface NextSlot {
+  readonly siteId: string;
+  readonly stratum: string;
+  /** From 1 at the site. */
+  readonly slotNumber: number;
+}
+
 /**
- * Picks the sequence of the next slot by the policy *balanced* and counts it in the ledger.
+ * Picks the sequence of the next slot by the plan's policy and counts it in the ledger.
  *
- * @param arrival.draw the slot's generator, see `slotDraw`
- * @returns as `nextSequence`
+ * @returns as `nextSequence`, `nextInBlock`
  */
 export function issueNext(
   ledger: AllocationLedger,
-  arrival: { readonly siteId: string; readonly stratum: string; readonly draw: Draw },
+  slot: NextSlot,
 ): { sequenceIndex: number; drawsUsed: number } {
-  const { set } = ledger;
-  const { siteId, stratum, draw } = arrival;
-  const issued = {
-    cell: cellIn(ledger, siteId, stratum),
-    site: tallyIn(ledger.sites, siteId, set),
-    stratum: tallyIn(ledger.strata, stratum, set),
-    study: ledger.study,
-  };
-  const next = nextSequence({ set, issued, draw });
+  const next = pickNext(ledger, slot);
+  const { siteId, stratum } = slot;
   recordIssued(ledger, { siteId, stratum, sequenceIndex: next.sequenceIndex, count: 1 });
   return next;
+}
+
+function pickNext(
+  ledger: AllocationLedger,
+  slot: NextSlot,
+): { sequenceIndex: number; drawsUsed: number } {
+  const { plan, chance } = ledger;
+  const { siteId, stratum, slotNumber } = slot;
+  const { set, policy } = plan;
+  const draw = chance.slot(siteId, slotNumber);
+  const cell = cellIn(ledger, siteId, stratum);
+  switch (policy.kind) {
+    case 'balanced': {
+      const site = tallyIn(ledger.sites, siteId, set);
+      const issued = {
+        cell,
+        site,
+        stratum: tallyIn(ledger.strata, stratum, set),
+        study: ledger.study,
+      };
+      return nextSequence({ set, issued, draw });
+    }
+    case 'permuted-blocks': {
+      const complete = mapIn(ledger.blocks, siteId);
+      const block = openBlock({
+        cell,
+        multiples: policy.multiples,
+        complete: complete.get(stratum) ?? NO_BLOCKS,
+        drawOf: (blockNumber) => chance.block(siteId, stratum, blockNumber),
+      });
+      complete.set(stratum, block.complete);
+      return nextInBlock(block, draw);
+    }
+  }
+}
+
+function mapIn<Value>(maps: Map<string, Map<string, Value>>, key: string): Map<string, Value> {
+  const found = maps.get(key) ?? new Map<string, Value>();
+  maps.set(key, found);
+  return found;
 }
 
 function tallyIn(tallies: Map<string, Tally>, key: string, set: SequenceSet): Tally {
@@ -99,9 +153,8 @@ function tallyIn(tallies: Map<string, Tally>, key: string, set: SequenceSet): Ta
 }
 
 function cellIn(ledger: AllocationLedger, siteId: string, stratum: string): Int32Array {
-  const site = ledger.cells.get(siteId) ?? new Map<string, Int32Array>();
-  ledger.cells.set(siteId, site);
-  const cell = site.get(stratum) ?? new Int32Array(ledger.set.sequences.length);
+  const site = mapIn(ledger.cells, siteId);
+  const cell = site.get(stratum) ?? new Int32Array(ledger.plan.set.sequences.length);
   site.set(stratum, cell);
   return cell;
 }

@@ -1,6 +1,5 @@
-import { SECRET_BYTES, secretHashOf, slotDraw } from './keyed-draw.ts';
-import { type AllocationLedger, emptyLedger, issueNext } from './ledger.ts';
-import type { SequenceSet } from './tally.ts';
+import { keyedChance, SECRET_BYTES, secretHashOf } from './keyed-draw.ts';
+import { type AllocationLedger, type AllocationPlan, emptyLedger, issueNext } from './ledger.ts';
 
 /** One issued slot, as it was recorded. */
 export interface SlotRecord {
@@ -35,14 +34,14 @@ export interface ReplayDifference {
  * Recomputes every allocation of a study from its revealed secret.
  *
  * The secret must have the published hash; issue numbers must run from 1 without gap, slot numbers
- * likewise at each site; every sequence and number of draws must be what `nextSequence` gives after
- * the slots before; and there must be as many slots as the study says it issued, since slots cut
+ * likewise at each site; every sequence and number of draws must be what the policy of its protocol
+ * version gives after the slots before; and there must be as many slots as the study says it issued, since slots cut
  * off at the end leave no gap.
  *
  * What it cannot see: two slots of different sites that change places in the order of issue, when
  * that order made no difference to either or to what followed. The audit log holds the order.
  *
- * @param input.sets        the sequences of each protocol version by version number
+ * @param input.plans       sequences and policy of each protocol version by version number
  * @param input.slots       in any order; they are replayed by issue number
  * @param input.slotsIssued how many the study says it issued
  * @returns the number of slots that agree before the first difference, and that difference
@@ -52,11 +51,11 @@ export function replayAllocations(input: {
   readonly studyId: string;
   readonly secret: Uint8Array;
   readonly secretHash: string;
-  readonly sets: ReadonlyMap<number, SequenceSet>;
+  readonly plans: ReadonlyMap<number, AllocationPlan>;
   readonly slots: readonly SlotRecord[];
   readonly slotsIssued: number;
 }): { verified: number; firstDifference: ReplayDifference | null } {
-  const { secret, secretHash, slotsIssued } = input;
+  const { studyId, secret, secretHash, slotsIssued } = input;
   const actualHash = secretHashOf(secret);
   if (secret.length !== SECRET_BYTES || actualHash !== secretHash) {
     const firstDifference: ReplayDifference = {
@@ -69,9 +68,9 @@ export function replayAllocations(input: {
   }
   const slots = input.slots.toSorted((a, b) => a.issueNumber - b.issueNumber);
   const ledgers = new Map(
-    Array.from(input.sets, ([version, set]): [number, AllocationLedger] => [
-      version,
-      emptyLedger(set),
+    Array.from(input.plans, ([protocolVersion, plan]): [number, AllocationLedger] => [
+      protocolVersion,
+      emptyLedger(plan, keyedChance({ secret, studyId, protocolVersion })),
     ]),
   );
   const slotsBySite = new Map<string, number>();
@@ -79,7 +78,7 @@ export function replayAllocations(input: {
     const slotNumber = (slotsBySite.get(slot.siteId) ?? 0) + 1;
     slotsBySite.set(slot.siteId, slotNumber);
     const expected = { issueNumber: verified + 1, slotNumber };
-    const firstDifference = differenceOf(slot, expected, ledgers, input);
+    const firstDifference = differenceOf(slot, expected, ledgers);
     if (firstDifference !== null) return { verified, firstDifference };
   }
   if (slots.length !== slotsIssued) {
@@ -99,7 +98,6 @@ function differenceOf(
   slot: SlotRecord,
   expected: { readonly issueNumber: number; readonly slotNumber: number },
   ledgers: ReadonlyMap<number, AllocationLedger>,
-  study: { readonly studyId: string; readonly secret: Uint8Array },
 ): ReplayDifference | null {
   const { issueNumber } = expected;
   const differ = (
@@ -117,9 +115,7 @@ function differenceOf(
   if (ledger === undefined) {
     return differ('protocol-version', [...ledgers.keys()].join(', '), slot.protocolVersion);
   }
-  const { siteId, stratum, slotNumber } = slot;
-  const draw = slotDraw({ secret: study.secret, studyId: study.studyId, siteId, slotNumber });
-  const next = issueNext(ledger, { siteId, stratum, draw });
+  const next = issueNext(ledger, slot);
   if (next.sequenceIndex !== slot.sequenceIndex) {
     return differ('sequence', next.sequenceIndex, slot.sequenceIndex);
   }

@@ -2,6 +2,7 @@ import { analysisFaults } from './check-analysis.ts';
 import { conditionKeysOf, factorFaults } from './check-factors.ts';
 import { exclusionFaults, measureFaults } from './check-measures.ts';
 import { periodFaults } from './check-periods.ts';
+import { policyFaults } from './check-policy.ts';
 import { schemeFaults } from './check-scheme.ts';
 import { siteFaults } from './check-sites.ts';
 import { keyFaults, type ProtocolFault } from './fault.ts';
@@ -9,7 +10,7 @@ import type { Protocol } from './protocol.ts';
 
 /**
  * Everything that keeps a protocol from being registered, all at once, in document order by part:
- * hypotheses, factors, scheme, periods, sites, measures, exclusions, analysis.
+ * hypotheses, factors, scheme, policy, periods, sites, measures, exclusions, analysis.
  *
  * The document's shape (types, members present) is taken as given. Parts that depend on a faulty
  * part are checked as far as they can be: with too many conditions to list, the scheme, and what
@@ -28,6 +29,7 @@ export function checkProtocol(protocol: Protocol): ProtocolFault[] {
   if (conditionKeys !== null) {
     faults.push(...schemeFaults(protocol.scheme, conditionKeys, protocol.periods.count));
   }
+  faults.push(...policyFaults(protocol.policy));
   faults.push(...periodFaults(protocol.periods));
   faults.push(...siteFaults(protocol.sites));
   faults.push(...measureFaults(protocol.measures));

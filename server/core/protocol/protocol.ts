@@ -138,7 +138,10 @@ export const TWO_CONDITION_DESIGNS = [
 export type TwoConditionDesign = (typeof TWO_CONDITION_DESIGNS)[number];
 
 /** The rule by which sequences of the scheme are handed out. */
-export type PolicyChoice = { readonly kind: 'balanced' };
+export type PolicyChoice =
+  | { readonly kind: 'balanced' }
+  /** Blocks that hold every sequence equally often: one of the multiples, drawn for each block. */
+  | { readonly kind: 'permuted-blocks'; readonly multiples: readonly number[] };
 
 /** Who takes a vacated slot: the next arrival of the same site and stratum, or nobody. */
 export type ReplacementRule = { readonly kind: 'same-site' } | { readonly kind: 'none' };

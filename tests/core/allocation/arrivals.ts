@@ -1,9 +1,9 @@
-import { slotDraw } from '#core/allocation/keyed-draw.ts';
+import { keyedChance } from '#core/allocation/keyed-draw.ts';
 import { type AllocationLedger, emptyLedger, issueNext } from '#core/allocation/ledger.ts';
 import type { SlotRecord } from '#core/allocation/replay.ts';
 import type { SequenceSet } from '#core/allocation/tally.ts';
 import { sequencesOf } from '#core/designs/sequences-of.ts';
-import type { BaseScheme } from '#core/protocol/protocol.ts';
+import type { BaseScheme, PolicyChoice } from '#core/protocol/protocol.ts';
 
 export const STUDY_ID = '0197f000-0000-7000-8000-000000000001';
 
@@ -27,8 +27,13 @@ export function rangeOf(counts: ArrayLike<number>): number {
 }
 
 /** A study that hands out slots one arrival at a time and keeps their records. */
-export function openStudy(set: SequenceSet, secret: Uint8Array) {
-  const ledger: AllocationLedger = emptyLedger(set);
+export function openStudy(
+  set: SequenceSet,
+  secret: Uint8Array,
+  policy: PolicyChoice = { kind: 'balanced' },
+) {
+  const chance = keyedChance({ secret, studyId: STUDY_ID, protocolVersion: 1 });
+  const ledger: AllocationLedger = emptyLedger({ set, policy }, chance);
   const slots: SlotRecord[] = [];
   const slotsBySite = new Map<string, number>();
   const arrive = (arrival: Arrival): SlotRecord => {
@@ -36,8 +41,7 @@ export function openStudy(set: SequenceSet, secret: Uint8Array) {
     const stratum = `stratum-${arrival.stratum}`;
     const slotNumber = (slotsBySite.get(siteId) ?? 0) + 1;
     slotsBySite.set(siteId, slotNumber);
-    const draw = slotDraw({ secret, studyId: STUDY_ID, siteId, slotNumber });
-    const next = issueNext(ledger, { siteId, stratum, draw });
+    const next = issueNext(ledger, { siteId, stratum, slotNumber });
     const slot: SlotRecord = {
       issueNumber: slots.length + 1,
       siteId,

@@ -1,6 +1,6 @@
 import { createHash, createHmac } from 'node:crypto';
 import { describe, expect, it } from 'vitest';
-import { secretHashOf, slotDraw, uniformBelow } from '#core/allocation/keyed-draw.ts';
+import { keyedChance, secretHashOf, slotDraw, uniformBelow } from '#core/allocation/keyed-draw.ts';
 import { STUDY_ID, secretOf } from './arrivals.ts';
 
 function bytesOf(number: number): Uint8Array {
@@ -25,6 +25,25 @@ describe('the draw of a slot', () => {
     const options = { secret: secretOf(1), studyId: 's', siteId: 't', slotNumber: 1 };
     expect(() => slotDraw({ ...options, secret: new Uint8Array(31) })).toThrow(/32 bytes/);
     expect(() => slotDraw({ ...options, slotNumber: 0 })).toThrow(/from 1/);
+  });
+});
+
+describe('the draw of a block', () => {
+  it('is an HMAC over its place that anybody with the secret can repeat', () => {
+    const secret = secretOf(42);
+    const chance = keyedChance({ secret, studyId: STUDY_ID, protocolVersion: 2 });
+    // reference: Node.js crypto.createHmac over the documented message, written by hand
+    const message = `["fairturn-block-1","${STUDY_ID}","fen",2,"early.left",5,1]`;
+    const expected = createHmac('sha256', secret).update(message).digest('hex');
+    const bytes = chance.block('fen', 'early.left', 5)(1);
+    expect(Buffer.from(bytes).toString('hex')).toBe(expected);
+    const slot = slotDraw({ secret, studyId: STUDY_ID, siteId: 'fen', slotNumber: 5 });
+    expect(chance.slot('fen', 5)(1)).toEqual(slot(1));
+  });
+
+  it('needs a whole secret', () => {
+    const options = { secret: new Uint8Array(16), studyId: 's', protocolVersion: 1 };
+    expect(() => keyedChance(options).block('t', 'all', 1)).toThrow(/32 bytes, not 16/);
   });
 });
 

@@ -2,25 +2,31 @@ import fc from 'fast-check';
 import { describe, expect, it } from 'vitest';
 import { secretHashOf } from '#core/allocation/keyed-draw.ts';
 import { replayAllocations, type SlotRecord } from '#core/allocation/replay.ts';
+import type { PolicyChoice } from '#core/protocol/protocol.ts';
 import { openStudy, STUDY_ID, secretOf, setOf } from './arrivals.ts';
 
 const set = setOf('williams', 4);
 const secret = secretOf(77);
 
-function recordedSlots(arrivals: number): readonly SlotRecord[] {
-  const { slots, arrive } = openStudy(set, secret);
+const POLICIES: readonly PolicyChoice[] = [
+  { kind: 'balanced' },
+  { kind: 'permuted-blocks', multiples: [1, 2, 3] },
+];
+
+function recordedSlots(arrivals: number, policy: PolicyChoice): readonly SlotRecord[] {
+  const { slots, arrive } = openStudy(set, secret, policy);
   for (let i = 0; i < arrivals; i += 1) arrive({ site: (i * 7) % 5, stratum: i % 2 });
   return slots;
 }
 
-function replay(slots: readonly SlotRecord[], slotsIssued = slots.length) {
-  const secretHash = secretHashOf(secret);
-  const sets = new Map([[1, set]]);
-  return replayAllocations({ studyId: STUDY_ID, secret, secretHash, sets, slots, slotsIssued });
-}
+describe.each(POLICIES)('replay under the policy $kind', (policy) => {
+  const slots = recordedSlots(120, policy);
+  const plans = new Map([[1, { set, policy }]]);
 
-describe('replay', () => {
-  const slots = recordedSlots(120);
+  function replay(changed: readonly SlotRecord[], slotsIssued = changed.length) {
+    const study = { studyId: STUDY_ID, secret, secretHash: secretHashOf(secret), plans };
+    return replayAllocations({ ...study, slots: changed, slotsIssued });
+  }
 
   it('verifies what was handed out, in whatever order the records come', () => {
     expect(replay(slots)).toEqual({ verified: 120, firstDifference: null });
@@ -34,7 +40,7 @@ describe('replay', () => {
       studyId: STUDY_ID,
       secret: other,
       secretHash: secretHashOf(secret),
-      sets: new Map([[1, set]]),
+      plans,
       slots,
       slotsIssued: slots.length,
     });

@@ -2,6 +2,7 @@ import type { ExclusionRule, Measure, MeasurePlan, Protocol } from '../../protoc
 import { html, type Markup } from '../html.ts';
 import { countText, percentText } from '../number-text.ts';
 import { ESTIMATES, labelWithUnit, type PageContext } from '../page-context.ts';
+import { policyText } from '../policy-text.ts';
 import { columns, table } from '../table.ts';
 
 /** What was fixed before the data: the protocol and its hash. */
@@ -17,7 +18,7 @@ so that any later change to it would show.</p>
 <dt>Scheme</dt><dd>${SCHEMES[document.scheme.kind]}</dd>
 <dt>Periods</dt><dd>${document.periods.count}, of
 ${countText(document.periods.repetitions, 'trial')} each</dd>
-<dt>Hand-out</dt><dd>${document.policy.kind}; ${REPLACEMENTS[document.replacement.kind]}</dd>
+<dt>Hand-out</dt><dd>${policyText(document.policy)}; ${REPLACEMENTS[document.replacement.kind]}</dd>
 </dl>
 <h3>Hypotheses</h3>
 ${hypotheses(document)}

@@ -1,0 +1,8 @@
+import type { AllocationPlan } from '#core/allocation/ledger.ts';
+import type { RegisteredProtocol } from '#server/studies/service.ts';
+
+/** What a registered protocol version hands out, and by which rule. */
+export function allocationPlanOf(registered: RegisteredProtocol): AllocationPlan {
+  const { set, protocol } = registered;
+  return { set, policy: protocol.policy };
+}
