@@ -3,6 +3,7 @@ import { html, type Markup } from '../html.ts';
 import { countText, percentText } from '../number-text.ts';
 import { ESTIMATES, labelWithUnit, type PageContext } from '../page-context.ts';
 import { policyText } from '../policy-text.ts';
+import { schemeText } from '../scheme-text.ts';
 import { columns, table } from '../table.ts';
 
 /** What was fixed before the data: the protocol and its hash. */
@@ -15,7 +16,7 @@ so that any later change to it would show.</p>
 <dt>Version</dt><dd>${protocol.version}</dd>
 <dt>SHA-256 of the protocol</dt><dd><code>${protocol.sha256}</code></dd>
 <dt>Rationale</dt><dd>${document.rationale}</dd>
-<dt>Scheme</dt><dd>${SCHEMES[document.scheme.kind]}</dd>
+<dt>Scheme</dt><dd>${schemeText(document)}</dd>
 <dt>Periods</dt><dd>${document.periods.count}, of
 ${countText(document.periods.repetitions, 'trial')} each</dd>
 <dt>Hand-out</dt><dd>${policyText(document.policy)}; ${REPLACEMENTS[document.replacement.kind]}</dd>
@@ -36,22 +37,6 @@ function hypotheses({ hypotheses: registered }: Protocol): Markup {
 const REPLACEMENTS: { readonly [Kind in Protocol['replacement']['kind']]: string } = {
   'same-site': 'a vacated slot goes to the next arrival of the same site and stratum',
   none: 'a vacated slot goes to nobody',
-};
-
-const SCHEMES: { readonly [Kind in Protocol['scheme']['kind']]: string } = {
-  'complete-permutations': 'complete permutations',
-  'cyclic-latin-square': 'cyclic Latin square',
-  williams: 'Williams design',
-  'orthogonal-latin-squares': 'complete set of orthogonal Latin squares',
-  mirrored: 'each sequence followed by its mirror image',
-  'extra-period': 'last condition repeated in an extra period',
-  'two-conditions': 'design for two conditions',
-  'balanced-incomplete-blocks': 'balanced incomplete blocks',
-  'permutation-fraction': 'balanced fraction of the complete permutations',
-  'random-permutations': 'independent random orders from a registered seed',
-  'constrained-permutations': 'every order that meets the constraints of the protocol',
-  nested: 'the levels of one factor in blocks, the others counterbalanced inside them',
-  'custom-list': 'a list of sequences given in the protocol',
 };
 
 const DIRECTIONS = {
