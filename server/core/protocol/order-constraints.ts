@@ -1,8 +1,8 @@
 import { isWholeFrom, type ProtocolFault } from './fault.ts';
 import { type OrderConstraint, SEQUENCES_MAX } from './protocol.ts';
 
-/** Orders under constraints are searched one by one: 9! is 362,880. */
-export const CONSTRAINED_CONDITIONS_MAX = 9;
+/** The search for orders keeps a note for each set of conditions and each of its members. */
+export const CONSTRAINED_CONDITIONS_MAX = 12;
 
 /** A protocol states at most this many constraints on the order. */
 const CONSTRAINTS_MAX = 200;
@@ -64,24 +64,53 @@ export function permittedOrders(
 ): number[][] {
   const size = conditionKeys.length;
   const { periodBits, nextBits } = permissionsOf(constraints, conditionKeys);
+  const all = 2 ** size - 1;
+  // Whether the conditions not yet used can be added after the last one: it depends on which are
+  // used and which was last, not on their order. Asking it first spares every dead end.
+  const canEnd = new Int8Array(2 ** size * size);
+  const successors = (usedBits: number, last: number): number[] => {
+    const periodIndex = bitCount(usedBits);
+    const found: number[] = [];
+    for (let condition = 0; condition < size; condition += 1) {
+      const bit = 1 << condition;
+      const follows = last === NONE || (nextBits[last]! & bit) !== 0;
+      const fits = ((periodBits[condition]! >> periodIndex) & 1) === 1;
+      if ((usedBits & bit) === 0 && follows && fits) found.push(condition);
+    }
+    return found;
+  };
+  const ends = (usedBits: number, last: number): boolean => {
+    if (usedBits === all) return true;
+    const place = usedBits * size + last;
+    if (canEnd[place] === 0) {
+      const found = successors(usedBits, last).some((next) => ends(usedBits | (1 << next), next));
+      canEnd[place] = found ? 1 : -1;
+    }
+    return canEnd[place] === 1;
+  };
   const orders: number[][] = [];
-  const order: number[] = [];
-  const extend = (usedBits: number, mayFollow: number): void => {
-    if (order.length === size) {
+  const extend = (order: readonly number[], usedBits: number): void => {
+    if (usedBits === all) {
       orders.push([...order]);
       return;
     }
-    for (let condition = 0; condition < size && orders.length < most; condition += 1) {
-      const bit = 1 << condition;
-      const fits = (periodBits[condition]! >> order.length) & 1;
-      if ((usedBits & bit) !== 0 || (mayFollow & bit) === 0 || fits === 0) continue;
-      order.push(condition);
-      extend(usedBits | bit, nextBits[condition]!);
-      order.pop();
+    for (const next of successors(usedBits, order.at(-1) ?? NONE)) {
+      if (orders.length === most) return;
+      const nowUsed = usedBits | (1 << next);
+      if (ends(nowUsed, next)) extend([...order, next], nowUsed);
     }
   };
-  extend(0, 2 ** size - 1);
+  extend([], 0);
   return orders;
+}
+
+/** Stands for the condition before the first period. */
+const NONE = -1;
+
+function bitCount(bits: number): number {
+  let count = 0;
+  for (let rest = bits; rest !== 0; rest &= rest - 1) count += 1;
+  return count;
 }
 
 /**

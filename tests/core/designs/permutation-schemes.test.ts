@@ -153,6 +153,21 @@ describe('orders under constraints', () => {
     expect(rows.every((row) => row[0] === 3)).toBe(true);
   });
 
+  it('may fix the order of twelve conditions but for two places', () => {
+    // By hand: each condition from the third on has its own period, the first two may be exchanged
+    const keys = keysOf(12);
+    const constraints = keys.slice(2).map((condition, index) => ({
+      kind: 'always-in-periods' as const,
+      condition,
+      periods: [index + 3],
+    }));
+    const rest = [2, 3, 4, 5, 6, 7, 8, 9, 10, 11];
+    expect(constrainedPermutations(constraints, keys)).toEqual([
+      [0, 1, ...rest],
+      [1, 0, ...rest],
+    ]);
+  });
+
   it('are those that a plain filter of all orders leaves', () => {
     const size = 5;
     const keys = keysOf(size);
