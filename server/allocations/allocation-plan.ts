@@ -4,5 +4,6 @@ import type { RegisteredProtocol } from '#server/studies/service.ts';
 /** What a registered protocol version hands out, and by which rule. */
 export function allocationPlanOf(registered: RegisteredProtocol): AllocationPlan {
   const { set, protocol } = registered;
-  return { set, policy: protocol.policy };
+  const factorKeys = protocol.betweenFactors.map(({ key }) => key);
+  return { set, policy: protocol.policy, factorKeys };
 }

@@ -128,6 +128,27 @@ const PolicyChoice = z
           .describe('How often each sequence stands in a block: one of these, drawn for each'),
       })
       .describe('In each site × stratum, counts differ by at most the largest of the multiples'),
+    z
+      .strictObject({
+        kind: z.literal('minimisation'),
+        imbalance: z
+          .enum(['variance', 'range'])
+          .describe('How the imbalance of one margin is measured'),
+        weights: z
+          .strictObject({
+            site: z.int(),
+            study: z.int(),
+            factors: z
+              .array(z.strictObject({ factor: Key, weight: z.int() }))
+              .max(ListMax)
+              .describe('One for every between factor'),
+          })
+          .describe('Whole numbers from 0: how much the evenness of each margin counts'),
+        bestProbability: z
+          .number()
+          .describe('How likely the best sequence is taken; above 0.5, at most 1'),
+      })
+      .describe('Site, factors and study are kept even, each by its weight; no bound is certain'),
   ])
   .meta({ id: 'PolicyChoice', description: 'The rule by which sequences are handed out' });
 

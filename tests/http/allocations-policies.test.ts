@@ -12,9 +12,19 @@ import {
 
 type Policy = ProtocolDocument['policy'];
 
+/** With the widest difference of counts in a cell that the policy promises, if it promises one. */
 const POLICIES: readonly { policy: Policy; widest: number | null }[] = [
   { policy: { kind: 'balanced' }, widest: 1 },
   { policy: { kind: 'permuted-blocks', multiples: [1, 2] }, widest: 2 },
+  {
+    policy: {
+      kind: 'minimisation',
+      imbalance: 'range',
+      weights: { site: 2, study: 1, factors: [{ factor: 'shift', weight: 1 }] },
+      bestProbability: 0.9,
+    },
+    widest: null,
+  },
 ];
 
 let service: TestService;

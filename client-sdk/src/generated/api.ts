@@ -1436,6 +1436,27 @@ export interface components {
             kind: "permuted-blocks";
             /** @description How often each sequence stands in a block: one of these, drawn for each */
             multiples: number[];
+        } | {
+            /** @constant */
+            kind: "minimisation";
+            /**
+             * @description How the imbalance of one margin is measured
+             * @enum {string}
+             */
+            imbalance: "variance" | "range";
+            /** @description Whole numbers from 0: how much the evenness of each margin counts */
+            weights: {
+                site: number;
+                study: number;
+                /** @description One for every between factor */
+                factors: {
+                    /** @description Lower-case words joined by hyphens */
+                    factor: string;
+                    weight: number;
+                }[];
+            };
+            /** @description How likely the best sequence is taken; above 0.5, at most 1 */
+            bestProbability: number;
         };
         Problem: {
             /** @enum {string} */

@@ -1,6 +1,7 @@
 import { DomainError } from '../errors.ts';
-import type { PolicyChoice } from '../protocol/protocol.ts';
+import type { Minimisation, PolicyChoice } from '../protocol/protocol.ts';
 import type { Chance } from './keyed-draw.ts';
+import { minimisedSequence, type WeightedMargin } from './minimisation.ts';
 import { nextSequence } from './next-sequence.ts';
 import { type CompleteBlocks, NO_BLOCKS, nextInBlock, openBlock } from './permuted-blocks.ts';
 import { addToTally, emptyTally, type SequenceSet, type Tally } from './tally.ts';
@@ -9,6 +10,8 @@ import { addToTally, emptyTally, type SequenceSet, type Tally } from './tally.ts
 export interface AllocationPlan {
   readonly set: SequenceSet;
   readonly policy: PolicyChoice;
+  /** Keys of the between factors; a stratum names a level of each, in this order. */
+  readonly factorKeys: readonly string[];
 }
 
 /**
@@ -92,7 +95,7 @@ export interface NextSlot {
 /**
  * Picks the sequence of the next slot by the plan's policy and counts it in the ledger.
  *
- * @returns as `nextSequence`, `nextInBlock`
+ * @returns as `nextSequence`, `nextInBlock`, `minimisedSequence`
  */
 export function issueNext(
   ledger: AllocationLedger,
@@ -135,7 +138,35 @@ function pickNext(
       complete.set(stratum, block.complete);
       return nextInBlock(block, draw);
     }
+    case 'minimisation': {
+      const margins = weightedMargins(ledger, policy, slot);
+      return minimisedSequence({ sequenceCount: set.sequences.length, margins, policy, draw });
+    }
   }
+}
+
+/** What minimisation keeps even for an arrival: its site, its level of each factor, the study. */
+export function weightedMargins(
+  ledger: AllocationLedger,
+  { weights }: Minimisation,
+  arrival: { readonly siteId: string; readonly stratum: string },
+): WeightedMargin[] {
+  const { set, factorKeys } = ledger.plan;
+  const { counts: site } = tallyIn(ledger.sites, arrival.siteId, set);
+  const levels = arrival.stratum.split('.');
+  return [
+    { counts: site, weight: weights.site },
+    ...weights.factors.map(({ factor, weight }) => {
+      const place = factorKeys.indexOf(factor);
+      const counts = new Int32Array(set.sequences.length);
+      for (const [stratum, tally] of ledger.strata) {
+        if (stratum.split('.')[place] !== levels[place]) continue;
+        for (const [index, count] of tally.counts.entries()) counts[index]! += count;
+      }
+      return { counts, weight };
+    }),
+    { counts: ledger.study.counts, weight: weights.study },
+  ];
 }
 
 function mapIn<Value>(maps: Map<string, Map<string, Value>>, key: string): Map<string, Value> {

@@ -35,8 +35,8 @@ export interface ReplayDifference {
  *
  * The secret must have the published hash; issue numbers must run from 1 without gap, slot numbers
  * likewise at each site; every sequence and number of draws must be what the policy of its protocol
- * version gives after the slots before; and there must be as many slots as the study says it issued, since slots cut
- * off at the end leave no gap.
+ * version gives after the slots before; and there must be as many slots as the study says it
+ * issued, since slots cut off at the end leave no gap.
  *
  * What it cannot see: two slots of different sites that change places in the order of issue, when
  * that order made no difference to either or to what followed. The audit log holds the order.

@@ -29,7 +29,7 @@ export function checkProtocol(protocol: Protocol): ProtocolFault[] {
   if (conditionKeys !== null) {
     faults.push(...schemeFaults(protocol.scheme, conditionKeys, protocol.periods.count));
   }
-  faults.push(...policyFaults(protocol.policy));
+  faults.push(...policyFaults(protocol.policy, protocol.betweenFactors));
   faults.push(...periodFaults(protocol.periods));
   faults.push(...siteFaults(protocol.sites));
   faults.push(...measureFaults(protocol.measures));

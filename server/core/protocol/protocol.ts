@@ -141,7 +141,23 @@ export type TwoConditionDesign = (typeof TWO_CONDITION_DESIGNS)[number];
 export type PolicyChoice =
   | { readonly kind: 'balanced' }
   /** Blocks that hold every sequence equally often: one of the multiples, drawn for each block. */
-  | { readonly kind: 'permuted-blocks'; readonly multiples: readonly number[] };
+  | { readonly kind: 'permuted-blocks'; readonly multiples: readonly number[] }
+  | Minimisation;
+
+/** Margins are kept even, site, between factors and study, each by its weight; cells are not. */
+export interface Minimisation {
+  readonly kind: 'minimisation';
+  /** How the imbalance of one margin is measured. */
+  readonly imbalance: 'variance' | 'range';
+  /** Whole numbers from 0; every between factor has one. */
+  readonly weights: {
+    readonly site: number;
+    readonly study: number;
+    readonly factors: readonly { readonly factor: string; readonly weight: number }[];
+  };
+  /** How likely the sequence that leaves the least imbalance is taken: above 0.5, at most 1. */
+  readonly bestProbability: number;
+}
 
 /** Who takes a vacated slot: the next arrival of the same site and stratum, or nobody. */
 export type ReplacementRule = { readonly kind: 'same-site' } | { readonly kind: 'none' };

@@ -33,7 +33,7 @@ export function openStudy(
   policy: PolicyChoice = { kind: 'balanced' },
 ) {
   const chance = keyedChance({ secret, studyId: STUDY_ID, protocolVersion: 1 });
-  const ledger: AllocationLedger = emptyLedger({ set, policy }, chance);
+  const ledger: AllocationLedger = emptyLedger({ set, policy, factorKeys: ['stratum'] }, chance);
   const slots: SlotRecord[] = [];
   const slotsBySite = new Map<string, number>();
   const arrive = (arrival: Arrival): SlotRecord => {

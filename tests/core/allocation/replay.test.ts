@@ -11,6 +11,12 @@ const secret = secretOf(77);
 const POLICIES: readonly PolicyChoice[] = [
   { kind: 'balanced' },
   { kind: 'permuted-blocks', multiples: [1, 2, 3] },
+  {
+    kind: 'minimisation',
+    imbalance: 'variance',
+    weights: { site: 3, study: 1, factors: [{ factor: 'stratum', weight: 2 }] },
+    bestProbability: 0.8,
+  },
 ];
 
 function recordedSlots(arrivals: number, policy: PolicyChoice): readonly SlotRecord[] {
@@ -21,7 +27,7 @@ function recordedSlots(arrivals: number, policy: PolicyChoice): readonly SlotRec
 
 describe.each(POLICIES)('replay under the policy $kind', (policy) => {
   const slots = recordedSlots(120, policy);
-  const plans = new Map([[1, { set, policy }]]);
+  const plans = new Map([[1, { set, policy, factorKeys: ['stratum'] }]]);
 
   function replay(changed: readonly SlotRecord[], slotsIssued = changed.length) {
     const study = { studyId: STUDY_ID, secret, secretHash: secretHashOf(secret), plans };

@@ -27,3 +27,60 @@ describe('permuted blocks', () => {
     ],
   });
 });
+
+describe('minimisation', () => {
+  const valid = () => ({
+    kind: 'minimisation' as const,
+    imbalance: 'variance' as const,
+    weights: { site: 2, study: 1, factors: [{ factor: 'age', weight: 0 }] },
+    bestProbability: 0.75,
+  });
+  each({
+    'may leave a factor out of account, and be certain': [
+      (p) => {
+        p.policy = { ...valid(), bestProbability: 1 };
+      },
+    ],
+    'needs a weight above 0': [
+      (p) => {
+        const weights = { site: 0, study: 0, factors: [{ factor: 'age', weight: 0 }] };
+        p.policy = { ...valid(), weights };
+      },
+      ['/policy/weights', 'no-positive-weight'],
+    ],
+    'needs one weight for each between factor, and none for another': [
+      (p) => {
+        const factors = [
+          { factor: 'lamp', weight: 1 },
+          { factor: 'lamp', weight: 1 },
+        ];
+        p.policy = { ...valid(), weights: { site: 1, study: 1, factors } };
+      },
+      ['/policy/weights/factors/0/factor', 'unknown-factor'],
+      ['/policy/weights/factors/1/factor', 'unknown-factor'],
+      ['/policy/weights/factors/1/factor', 'duplicate-factor'],
+      ['/policy/weights/factors', 'factor-without-weight'],
+    ],
+    'needs whole weights from 0 to 1000': [
+      (p) => {
+        const factors = [{ factor: 'age', weight: 1001 }];
+        p.policy = { ...valid(), weights: { site: -1, study: 0.5, factors } };
+      },
+      ['/policy/weights/site', 'unusable-weight'],
+      ['/policy/weights/study', 'unusable-weight'],
+      ['/policy/weights/factors/0/weight', 'unusable-weight'],
+    ],
+    'takes the best sequence more often than not': [
+      (p) => {
+        p.policy = { ...valid(), bestProbability: 0.5 };
+      },
+      ['/policy/bestProbability', 'unusable-best-probability'],
+    ],
+    'takes it at most always': [
+      (p) => {
+        p.policy = { ...valid(), bestProbability: 1.01 };
+      },
+      ['/policy/bestProbability', 'unusable-best-probability'],
+    ],
+  });
+});
