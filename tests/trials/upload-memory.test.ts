@@ -24,7 +24,7 @@ function highestResidentMib(pid: number): number {
 }
 
 describe.runIf(process.platform === 'linux')('an upload of 100,000 rows', () => {
-  // The issue's own bound: 256 MiB of server memory. Measured over the whole life of the process.
+  // README promises this bound. It is measured over the whole life of the process, start included.
   it('keeps the whole server within 256 MiB, and is stored', async () => {
     const server = startNodeProgram('server/main.ts', {
       environment: {
