@@ -20,7 +20,8 @@ export type UnadjustedComparison = ComparedPair &
  * The pairs a plan compares: all of them, earlier condition first; or each other condition, first,
  * with the reference, second.
  *
- * @param conditionKeys in the order of the protocol
+ * @param conditionKeys in the order of the protocol, those that are compared: see
+ *   `comparedConditions`
  */
 export function comparedPairs(
   { contrasts }: MeasurePlan,

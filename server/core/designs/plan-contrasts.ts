@@ -1,5 +1,6 @@
 import { conditionKeysOf } from '../protocol/check-factors.ts';
 import { schemeFaults } from '../protocol/check-scheme.ts';
+import { comparedConditions } from '../protocol/compared-conditions.ts';
 import type { ProtocolFault } from '../protocol/fault.ts';
 import type { MeasurePlan, Protocol } from '../protocol/protocol.ts';
 import { directEfficiency } from './efficiency.ts';
@@ -27,9 +28,11 @@ export function planContrastFaults(protocol: Protocol): ProtocolFault[] {
     sequencesOf(protocol.scheme, keys, periods),
     keys.length,
   );
+  const compared = new Set(comparedConditions(protocol.scheme, keys));
   const missing = pairs
     .filter(({ variance }) => !variance.estimable)
-    .map(({ first, second }) => [keys[first] ?? '', keys[second] ?? ''] as const);
+    .map(({ first, second }) => [keys[first] ?? '', keys[second] ?? ''] as const)
+    .filter((pair) => pair.every((key) => compared.has(key)));
   const faults: ProtocolFault[] = [];
   for (const [index, plan] of protocol.analysis.measures.entries()) {
     if (!isAdjusted(plan)) continue;
@@ -43,7 +46,8 @@ export function planContrastFaults(protocol: Protocol): ProtocolFault[] {
     const rest = planned.length - named.length;
     const message =
       `The sequences cannot compare ${named.join(', ')}${rest > 0 ? ` and ${rest} more` : ''} ` +
-      'adjusted for period; add sequences in which they, or a condition between them, meet';
+      'adjusted for period; add sequences in which they, or a condition between them, meet in ' +
+      'more than one order';
     const pointer = `/analysis/measures/${index}/contrasts`;
     faults.push({ pointer, code: 'contrast-not-estimable', message });
   }

@@ -1,6 +1,7 @@
 import { meetsEveryCondition } from './check-scheme.ts';
+import { comparedConditions } from './compared-conditions.ts';
 import type { ProtocolFault } from './fault.ts';
-import type { Measure, MeasurePlan, Protocol } from './protocol.ts';
+import type { Measure, MeasurePlan, Protocol, SchemeChoice } from './protocol.ts';
 
 /**
  * Faults of the analysis plan.
@@ -36,7 +37,7 @@ export function analysisFaults(
     }
     faults.push(
       ...methodFaults(plan, measure, pointer),
-      ...contrastFaults(plan, conditionKeys, pointer),
+      ...contrastFaults(plan, protocol.scheme, conditionKeys, pointer),
       ...equivalenceFaults(plan, measure, pointer),
     );
     if (!(plan.alpha > 0 && plan.alpha < 1)) {
@@ -102,11 +103,26 @@ function methodFaults(
 
 function contrastFaults(
   { contrasts }: MeasurePlan,
+  scheme: SchemeChoice,
   conditionKeys: readonly string[] | null,
   pointer: string,
 ): ProtocolFault[] {
-  if (contrasts.kind !== 'against-reference' || conditionKeys === null) return [];
-  if (conditionKeys.includes(contrasts.reference)) return [];
+  if (conditionKeys === null) return [];
+  const compared = comparedConditions(scheme, conditionKeys);
+  if (compared.length < 2 && conditionKeys.length >= 2) {
+    const message =
+      'Besides the condition for familiarisation, which is in no comparison, ' +
+      'there are not two conditions to compare';
+    return [{ pointer: `${pointer}/contrasts`, code: 'nothing-to-compare', message }];
+  }
+  if (contrasts.kind !== 'against-reference' || compared.includes(contrasts.reference)) return [];
+  if (conditionKeys.includes(contrasts.reference)) {
+    const message =
+      `"${contrasts.reference}" is met first by everybody, for familiarisation, and cannot be ` +
+      `told apart from period 1; references can be ${compared.join(', ')}`;
+    const place = `${pointer}/contrasts/reference`;
+    return [{ pointer: place, code: 'reference-is-for-familiarisation', message }];
+  }
   return [
     {
       pointer: `${pointer}/contrasts/reference`,

@@ -81,7 +81,7 @@ function constraintText(constraint: OrderConstraint, labelOf: (key: string) => s
       return `${labelOf(second)} does not come immediately after ${labelOf(first)}`;
     }
     case 'familiarisation-first':
-      return `${labelOf(constraint.condition)} is first, for familiarisation`;
+      return `${labelOf(constraint.condition)} is first, for familiarisation, and not compared`;
   }
 }
 

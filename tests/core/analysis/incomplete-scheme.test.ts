@@ -90,6 +90,37 @@ describe('an incomplete scheme', () => {
   });
 });
 
+describe('a scheme with a condition for familiarisation', () => {
+  it('compares the other conditions alone', () => {
+    const scheme = {
+      kind: 'constrained-permutations',
+      constraints: [{ kind: 'familiarisation-first', condition: 'b' }],
+    } as const;
+    const { result, rows, sequences } = analysed(scheme, keys.slice(0, 4), 4);
+    expect(sequences).toHaveLength(6);
+    const meanOf = (condition: string) => {
+      const own = rows.filter((row) => row.condition === condition);
+      return own.reduce((sum, { values }) => sum + Number(values.score), 0) / own.length;
+    };
+    for (const set of result.comparisonSets) {
+      expect(set.familySize).toBe(3);
+      expect(set.comparisons.map(({ first, second }) => first + second)).toEqual([
+        'ac',
+        'ad',
+        'cd',
+      ]);
+      for (const comparison of set.comparisons) {
+        if (!comparison.estimable) throw new Error(comparison.detail);
+        // By hand: the other three stand equally often in periods 2 to 4, once for everybody, so
+        // that the difference of their plain means is free of participants and periods.
+        const { first, second, estimate } = comparison;
+        expect(estimate).toBeCloseTo(meanOf(first) - meanOf(second), 9);
+      }
+    }
+    expect(result.conditionAdjustedForPeriod).toMatchObject({ reason: 'rank-deficient' });
+  });
+});
+
 describe('a scheme in which conditions come twice', () => {
   it.each([
     [{ kind: 'mirrored', base: 'williams' }, 8],

@@ -75,6 +75,22 @@ describe('planned comparisons', () => {
     ]);
   });
 
+  it('leave out a condition for familiarisation, which everybody meets first', () => {
+    const protocol = validProtocol();
+    const constraints = [{ kind: 'familiarisation-first' as const, condition: 'cold.open' }];
+    protocol.scheme = { kind: 'constrained-permutations', constraints };
+    expect(checkProtocol(protocol)).toEqual([]);
+    expect(planContrastFaults(protocol)).toEqual([]);
+    // The same orders, but without saying what the first condition is for
+    protocol.scheme = {
+      kind: 'constrained-permutations',
+      constraints: [{ kind: 'always-in-periods', condition: 'cold.open', periods: [1] }],
+    };
+    expect(planContrastFaults(protocol)[0]!.message).toMatch(
+      /warm.open and cold.open adjusted for period; .* more than one order/,
+    );
+  });
+
   it('are not looked at while the scheme is faulty', () => {
     const protocol = twoPeriods(list([]));
     expect(planContrastFaults(protocol)).toEqual([]);

@@ -198,12 +198,33 @@ describe('faults of the scheme', () => {
       (p) => {
         const constraints = [
           { kind: 'never-in-order' as const, first: 'cold.open', second: 'warm.open' },
-          { kind: 'familiarisation-first' as const, condition: 'warm.open' },
+          { kind: 'familiarisation-first' as const, condition: 'cold.shaded' },
           { kind: 'always-in-periods' as const, condition: 'cold.open', periods: [1] },
         ];
         p.scheme = { kind: 'constrained-permutations', constraints };
       },
       ['/scheme/constraints', 'contradictory-constraints'],
+    ],
+    'condition for familiarisation as the reference': [
+      (p) => {
+        const constraints = [{ kind: 'familiarisation-first' as const, condition: 'warm.open' }];
+        p.scheme = { kind: 'constrained-permutations', constraints };
+      },
+      [`${a}/0/contrasts/reference`, 'reference-is-for-familiarisation'],
+    ],
+    'nothing to compare but a condition for familiarisation': [
+      (p) => {
+        p.withinFactors = p.withinFactors.slice(0, 1);
+        p.periods.count = 2;
+        p.periods.visits = [[1, 2]];
+        p.exclusions = [];
+        p.measures = p.measures.filter(({ key }) => key === 'tilt');
+        p.analysis.measures = p.analysis.measures.filter(({ measure }) => measure === 'tilt');
+        p.analysis.measures[0]!.role = 'primary';
+        const constraints = [{ kind: 'familiarisation-first' as const, condition: 'warm' }];
+        p.scheme = { kind: 'constrained-permutations', constraints };
+      },
+      [`${a}/0/contrasts`, 'nothing-to-compare'],
     ],
     'nested scheme with one factor': [
       (p) => {

@@ -1,6 +1,7 @@
 import { studentTSurvivalQuantile } from '../../distributions/student-t.ts';
 import type { ConfidenceInterval } from '../../estimability.ts';
 import type { ConditionFit, ContrastEstimate } from '../../models/period-adjusted-types.ts';
+import { comparedConditions } from '../../protocol/compared-conditions.ts';
 import {
   type ComparedPair,
   comparedPairs,
@@ -14,7 +15,8 @@ import type { MethodInput } from './method.ts';
 /** The plan's comparisons, adjusted for period, from participant + condition + period. */
 export function adjustedComparisons(input: MethodInput): ComparisonSet {
   const conditionKeys = input.data.conditions.map(({ key }) => key);
-  const comparisons = comparedPairs(input.plan, conditionKeys).map((pair) =>
+  const compared = comparedConditions(input.data.protocol.scheme, conditionKeys);
+  const comparisons = comparedPairs(input.plan, compared).map((pair) =>
     adjustedComparison(input, conditionKeys, pair),
   );
   return comparisonSet(

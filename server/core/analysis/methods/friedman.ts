@@ -1,5 +1,6 @@
 import { notEstimable } from '../../estimability.ts';
 import { matrixFromRows } from '../../numerics/matrix.ts';
+import { comparedConditions } from '../../protocol/compared-conditions.ts';
 import type { Measure } from '../../protocol/protocol.ts';
 import { friedmanTest } from '../../ranks/friedman.ts';
 import type { FriedmanTest } from '../../ranks/rank-types.ts';
@@ -38,7 +39,7 @@ export const friedman: Method & { readonly key: 'friedman' } = {
       plan,
       { estimate: 'unadjusted', basis: 'signed-rank' },
       standing,
-      comparedPairs(plan, conditionKeys).map((pair) =>
+      comparedPairs(plan, comparedConditions(data.protocol.scheme, conditionKeys)).map((pair) =>
         fault === null
           ? signedRankDifference(input, summary, rows, conditionKeys, pair)
           : { ...pair, ...fault },

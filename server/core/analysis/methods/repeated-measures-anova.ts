@@ -2,6 +2,7 @@ import { notEstimable } from '../../estimability.ts';
 import { pairedComparison } from '../../inference/paired-comparison.ts';
 import { repeatedMeasuresAnova } from '../../models/repeated-measures-anova.ts';
 import type { RepeatedMeasuresAnova, TableFactor } from '../../models/repeated-measures-types.ts';
+import { comparedConditions } from '../../protocol/compared-conditions.ts';
 import type { Factor } from '../../protocol/protocol.ts';
 import { type ConditionRow, valuesFault } from '../cell-summaries.ts';
 import {
@@ -35,7 +36,7 @@ export const repeatedMeasuresAnovaMethod: Method & { readonly key: 'repeated-mea
       plan,
       { estimate: 'unadjusted', basis: 'paired-t' },
       standing,
-      comparedPairs(plan, conditionKeys).map((pair) =>
+      comparedPairs(plan, comparedConditions(data.protocol.scheme, conditionKeys)).map((pair) =>
         fault === null ? pairedDifference(input, rows, conditionKeys, pair) : { ...pair, ...fault },
       ),
     );
