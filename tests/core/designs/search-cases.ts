@@ -64,6 +64,27 @@ export function keeps(sequence: readonly string[], constraint: OrderConstraint):
   }
 }
 
+/** Every sequence of the periods, and every set of so many of them, repetitions included. */
+export function everyDesign(conditionCount: number, periods: number, sequenceCount: number) {
+  let sequences: number[][] = [[]];
+  for (let period = 0; period < periods; period += 1) {
+    sequences = sequences.flatMap((sequence) =>
+      Array.from({ length: conditionCount }, (_, condition) => [...sequence, condition]),
+    );
+  }
+  const designs: number[][][] = [];
+  const extend = (design: number[][], from: number): void => {
+    if (design.length === sequenceCount) designs.push(design);
+    else {
+      for (let next = from; next < sequences.length; next += 1) {
+        extend([...design, sequences[next]!], next);
+      }
+    }
+  };
+  extend([], 0);
+  return designs;
+}
+
 /** Requests of up to five conditions and six periods with up to four constraints. */
 export const constrainedRequests: fc.Arbitrary<SearchRequest> = fc
   .record({

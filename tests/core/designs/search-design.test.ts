@@ -5,33 +5,12 @@ import { designInformation } from '#core/designs/information.ts';
 import { allPairs, criterionValue } from '#core/designs/search/criterion.ts';
 import { searchDesign } from '#core/designs/search/search-design.ts';
 import { williamsSquare } from '#core/designs/williams.ts';
-import { constrainedRequests, keeps, requestFor, resultOf } from './search-cases.ts';
+import { constrainedRequests, everyDesign, keeps, requestFor, resultOf } from './search-cases.ts';
 
 function adjustedEfficiency(sequences: readonly (readonly number[])[], conditionCount: number) {
   const { efficiency } = designEfficiency(sequences, conditionCount).directAdjusted;
   if (!efficiency.estimable) throw new Error(efficiency.detail);
   return efficiency.value;
-}
-
-/** Every sequence of the periods, and every set of so many of them, repetitions included. */
-function everyDesign(conditionCount: number, periods: number, sequenceCount: number) {
-  let sequences: number[][] = [[]];
-  for (let period = 0; period < periods; period += 1) {
-    sequences = sequences.flatMap((sequence) =>
-      Array.from({ length: conditionCount }, (_, condition) => [...sequence, condition]),
-    );
-  }
-  const designs: number[][][] = [];
-  const extend = (design: number[][], from: number): void => {
-    if (design.length === sequenceCount) designs.push(design);
-    else {
-      for (let next = from; next < sequences.length; next += 1) {
-        extend([...design, sequences[next]!], next);
-      }
-    }
-  };
-  extend([], 0);
-  return designs;
 }
 
 describe('searched designs reach', () => {

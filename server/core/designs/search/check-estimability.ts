@@ -155,5 +155,7 @@ function comparisons(missing: CriterionValue['missing'], conditionKeys: readonly
   const { first, second, carryover } = named;
   const kind = carryover ? 'the carryover of ' : '';
   const pair = `${kind}"${conditionKeys[first]}" against "${conditionKeys[second]}"`;
-  return missing.length === 1 ? pair : `${pair} and ${missing.length - 1} more comparisons`;
+  if (missing.length === 1) return pair;
+  const more = missing.length - 1;
+  return `${pair} and ${more} more comparison${more === 1 ? '' : 's'}`;
 }

@@ -115,11 +115,12 @@ function limitFaults({ conditionKeys, periods, limits }: SearchRequest): SearchF
 function sequenceFaults(request: SearchRequest): SearchFault[] {
   const { conditionKeys, periods, sequenceCount, given = [], start } = request;
   const faults: SearchFault[] = [];
-  const isIndex = (index: number) => isWholeFrom(0, index) && index < conditionKeys.length;
+  const last = conditionKeys.length - 1;
+  const isIndex = (index: number) => isWholeFrom(0, index) && index <= last;
   for (const [row, sequence] of given.entries()) {
     if (sequence.length <= periods && sequence.every(isIndex)) continue;
     const message = `Given sequence ${row + 1} is too long or names no condition`;
-    const remedy = `Give at most ${periods} condition indices from 0 to ${conditionKeys.length - 1}`;
+    const remedy = `Give at most ${periods} condition indices from 0 to ${last}`;
     faults.push(fault('malformed-sequence', message, remedy));
   }
   if (start === undefined) return faults;
@@ -131,7 +132,7 @@ function sequenceFaults(request: SearchRequest): SearchFault[] {
   for (const [row, sequence] of start.entries()) {
     if (sequence.length !== periods || !sequence.every(isIndex)) {
       const message = `Sequence ${row + 1} of the start has another form than those to be found`;
-      const remedy = `Give ${periods} condition indices from 0 to ${conditionKeys.length - 1}`;
+      const remedy = `Give ${periods} condition indices from 0 to ${last}`;
       faults.push(fault('malformed-sequence', message, remedy));
     } else if (!keepsRules(sequence, rules)) {
       const message = `Sequence ${row + 1} of the start does not keep the constraints`;

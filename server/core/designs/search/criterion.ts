@@ -35,8 +35,8 @@ export function effectCount(criterion: SearchCriterion, conditionCount: number):
 }
 
 /**
- * The matrix W with Σ weight·variance = tr(W·C⁻): the sum of weight·w·wᵀ over the pairs, with w = +1
- * and −1 at the pair's columns; weights add up to 1. Row-major, effects × effects.
+ * The matrix W with Σ weight·variance = tr(W·C⁻): the sum of weight·w·wᵀ over the pairs, with
+ * w = +1 and −1 at the pair's columns; weights add up to 1. Row-major, effects × effects.
  */
 export function weightMatrix(criterion: SearchCriterion, conditionCount: number): Float64Array {
   const size = effectCount(criterion, conditionCount);

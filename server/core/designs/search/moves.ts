@@ -9,8 +9,8 @@ import type { SequenceRules } from './sequence-rules.ts';
  * What one participant's moves are weighed with; filled by {@link visitParticipant}.
  *
  * A move puts condition y in the place of x in one period and, when it exchanges two periods, x in
- * the place of y in another. It alters Z by P·L, where L holds the difference y − x among direct and
- * among carryover columns and P says in which periods (carryover: in the next). With
+ * the place of y in another. It alters Z by P·L, where L holds the difference y − x among direct
+ * and among carryover columns and P says in which periods (carryover: in the next). With
  * G = M·Z − A⁺B, the information changes by LᵀPᵀG + GᵀPL + LᵀPᵀ(M − A⁺)PL, of rank 2 or 4, so that
  * everything about it is a difference of entries of the tables below.
  */

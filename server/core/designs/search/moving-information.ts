@@ -6,8 +6,8 @@ import { addSequenceInto, emptyInformationSums, informationOf } from '../informa
 /**
  * Added to the diagonal of the information, in units of 1/σ²: as if every effect had a prior of
  * variance 10⁶σ². A difference that the sequences do not determine then has a huge variance instead
- * of none, and the search finds its way out. It alters estimable variances by about one part in 10⁶;
- * the final figures are computed without it.
+ * of none, and the search finds its way out. It alters estimable variances by some parts in
+ * 10⁶; the final figures are computed without it.
  * Source of the idea: DuMouchel & Jones 1994, Technometrics 36:37–47.
  */
 export const RIDGE = 1e-6;

@@ -35,12 +35,12 @@ const CYCLE_LENGTH = 40;
 const SEARCH_STREAM = 0;
 
 /**
- * Searches for sequences that minimise the weighted average variance of the differences that matter,
- * in the model with participants and periods fixed.
+ * Searches for sequences that minimise the weighted average variance of the differences that
+ * matter, in the model with participants and periods fixed.
  *
- * Cycles of annealing, each followed by exchange until no single change is better. They go on in turn
- * from the best of some cyclically developed designs, from the best so far, from drawn sequences and
- * from the best so far again, until the budget is used. The result is the best design met; it is
+ * Cycles of annealing, each followed by exchange until no single change is better. They go on in
+ * turn from the best of some cyclically developed designs, from the best so far, from drawn
+ * sequences and from the best so far again, until the budget is used. The result is the best design met; it is
  * never worse than the start, which does not mean that there is no better one.
  * Sources: Kirkpatrick, Gelatt & Vecchi 1983, Science 220:671–680 (annealing); Jones & Donev 1996,
  * Statistics in Medicine 15:1435–1446 (exchange for cross-over designs).
@@ -79,7 +79,7 @@ export function searchDesign(request: SearchRequest, controls: SearchControls = 
   return outcomeOf(request, run);
 }
 
-/** Goes on from the best of the cyclically developed designs that the evaluations allow to judge. */
+/** Goes on from the best of as many cyclically developed designs as the evaluations can judge. */
 function moveToBestDeveloped(run: SearchRun, starts: Starts, evaluationsEnd: number): void {
   let best = starts.developed();
   moveTo(run, best);

@@ -3,8 +3,8 @@ import type { OrderConstraint } from '../../protocol/protocol.ts';
 import { type SequenceLimits, type SequenceRules, sequenceRules } from './sequence-rules.ts';
 
 /**
- * How many beginnings of sequences one draw may look at. Beginnings that lead nowhere are remembered,
- * so that without a limit on times a draw looks at few more than periods × conditions of them.
+ * How many beginnings of sequences one draw may look at. Those that lead nowhere are remembered, so
+ * that without a limit on times a draw looks at few more than periods × conditions of them.
  */
 const BEGINNINGS_MAX = 200_000;
 

@@ -1,10 +1,10 @@
 import type { OrderConstraint } from '../../protocol/protocol.ts';
 
-/** What every sequence is to keep: the protocol's constraints, and how often a condition may recur. */
+/** What every sequence is to keep: constraints, and how often a condition may recur. */
 export interface SequenceLimits {
   /**
-   * As in a protocol, with two differences, since here a condition may recur or be left out: one that
-   * is "always" in some periods, or first for familiarisation, stands there at least once for every
+   * As in a protocol, with two differences, since here a condition may recur or be left out: one
+   * that is "always" in some periods, or first for familiarisation, stands there at least once for every
    * participant and nowhere else; and a condition may be "never adjacent" to itself.
    */
   readonly constraints: readonly OrderConstraint[];

@@ -3,13 +3,13 @@ import type { RandomStream } from '../../numerics/generator.ts';
 import type { SequenceDrawer } from './sequence-draw.ts';
 import { keepsRules, type SequenceRules } from './sequence-rules.ts';
 
-/** Sequences to begin a cycle of the search with; sequenceCount × p condition indices, row-major. */
+/** Sequences to begin a cycle of the search with: sequenceCount × p indices, row-major. */
 export interface Starts {
   /** Each drawn by itself, with as few repetitions as the rules permit. */
   drawn(): Int32Array;
   /**
-   * One drawn sequence for every t, and the t − 1 that come of it by adding 1, 2, … to its condition
-   * indices modulo t: each condition equally often in each period. Where such a sequence breaks a
+   * One drawn sequence for every t, and the t − 1 that come of it by adding 1, 2, … to its
+   * condition indices modulo t: each condition equally often in each period. Where such a sequence breaks a
    * rule, one is drawn in its place.
    * Source: Davis & Hall 1969, "Cyclic change-over designs", Biometrika 56:283–293.
    */
