@@ -64,8 +64,8 @@ describe('a scheme in words', () => {
           { kind: 'always-in-periods', condition: 'warm', periods: [2] },
         ],
       },
-      'every order of the conditions in which Dim is first, for familiarisation, and not compared; ' +
-        'Warm is in period 2',
+      'every order of the conditions in which Dim is first, for familiarisation, ' +
+        'and not compared; Warm is in period 2',
     ],
     [{ kind: 'custom-list', sequences: [] }, 'a list of sequences given in the protocol'],
   ])('%j', (scheme, text) => {
