@@ -28,12 +28,18 @@ const cases: readonly Case[] = [
   ['size-out-of-range', /1 conditions/, /2 to 40 conditions/, requestFor(1, 3, 3)],
   ['size-out-of-range', /0 periods/, /1 to 60 periods/, requestFor(3, 0, 3)],
   ['size-out-of-range', /2\.5 sequences/, /1 to 1000 sequences/, requestFor(3, 3, 2.5)],
+  [
+    'repeated-condition',
+    /"tea" stands more/,
+    /once/,
+    requestFor(3, 3, 6, { conditionKeys: ['tea', 'milk', 'tea'] }),
+  ],
   ['malformed-seed', /"seed"/, /16/, requestFor(3, 3, 6, { seed: 'seed' })],
   ['malformed-budget', /0 evaluations/, /at least 1/, requestFor(3, 3, 6, { evaluationsMax: 0 })],
   [
     'malformed-weight',
     /weighs -1/,
-    /at least 0/,
+    /from 0/,
     weighing({ direct: [{ first: 0, second: 1, weight: -1 }] }),
   ],
   [
@@ -45,7 +51,7 @@ const cases: readonly Case[] = [
   [
     'malformed-weight',
     /weighs NaN/,
-    /finite/,
+    /a weight from 0/,
     weighing({ carryover: [{ first: 0, second: 1, weight: Number.NaN }] }),
   ],
   ['nothing-to-minimise', /No comparison/, /at least one/, weighing({ direct: allPairs(3, 0) })],
@@ -97,7 +103,7 @@ const cases: readonly Case[] = [
     'contradictory-constraints',
     // Of three, the two that contradict each other, and not the third.
     /together: "c0" first.*; "c1" always in period 1$/,
-    /any one/,
+    /one of these/,
     constrained(4, 4, [
       { kind: 'never-adjacent', first: 'c2', second: 'c3' },
       { kind: 'familiarisation-first', condition: 'c0' },
@@ -108,7 +114,7 @@ const cases: readonly Case[] = [
     'contradictory-constraints',
     // Two conditions that must alternate, and may not.
     /"c1" never immediately after "c0"/,
-    /any one/,
+    /one of these/,
     constrained(2, 4, [
       { kind: 'never-adjacent', first: 'c0', second: 'c0' },
       { kind: 'never-adjacent', first: 'c1', second: 'c1' },

@@ -49,7 +49,7 @@ export function fillingFaults({
       remedy:
         conflict.length === 1
           ? 'Leave this constraint out, or change it'
-          : 'Leave any one of these constraints out: the others of them leave a sequence',
+          : 'Leave one of these constraints out, or change it',
     },
   ];
 }

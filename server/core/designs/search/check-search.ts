@@ -4,7 +4,15 @@ import type { SearchFault, SearchFaultCode, SearchRequest } from './search-types
 import { keepsRules, sequenceRules } from './sequence-rules.ts';
 
 /** A search of more than these has tables and cycles beyond what a caller would wait for. */
-export const SEARCH_LIMITS = { conditions: 40, periods: 60, sequences: 1000 } as const;
+export const SEARCH_LIMITS = {
+  conditions: 40,
+  periods: 60,
+  sequences: 1000,
+  constraints: 200,
+} as const;
+
+/** Sums of larger weights could leave the range of a double. */
+const WEIGHT_MAX = 1e9;
 
 /**
  * Everything that keeps a search from beginning: sizes, weights, limits that name nothing or that
@@ -26,16 +34,22 @@ function fault(code: SearchFaultCode, message: string, remedy: string): SearchFa
 
 function sizeFaults(request: SearchRequest): SearchFault[] {
   const faults: SearchFault[] = [];
-  const { conditions, periods, sequences } = SEARCH_LIMITS;
+  const { conditions, periods, sequences, constraints } = SEARCH_LIMITS;
   const sizes = [
     ['conditions', request.conditionKeys.length, 2, conditions],
     ['periods', request.periods, 1, periods],
     ['sequences', request.sequenceCount, 1, sequences],
+    ['constraints', request.limits.constraints.length, 0, constraints],
   ] as const;
   for (const [noun, count, least, most] of sizes) {
     if (isWholeFrom(least, count) && count <= most) continue;
     const message = `There are ${count} ${noun}`;
     faults.push(fault('size-out-of-range', message, `Give ${least} to ${most} ${noun}`));
+  }
+  const repeated = request.conditionKeys.find((key, index, keys) => keys.indexOf(key) < index);
+  if (repeated !== undefined) {
+    const message = `The condition "${repeated}" stands more than once`;
+    faults.push(fault('repeated-condition', message, 'Name every condition once'));
   }
   if (!/^[0-9a-f]{16}$/.test(request.seed)) {
     const message = `"${request.seed}" is not a seed`;
@@ -54,18 +68,24 @@ function weightFaults({ conditionKeys, criterion, limits }: SearchRequest): Sear
   const isIndex = (index: number) => isWholeFrom(0, index) && index < conditionKeys.length;
   const all = [...direct, ...carryover];
   for (const { first, second, weight } of all) {
-    if (isIndex(first) && isIndex(second) && first !== second && weight >= 0 && weight < Infinity) {
+    if (
+      isIndex(first) &&
+      isIndex(second) &&
+      first !== second &&
+      weight >= 0 &&
+      weight <= WEIGHT_MAX
+    ) {
       continue;
     }
     const message = `A comparison of condition indices ${first} and ${second} weighs ${weight}`;
     const remedy =
       `Give two different indices from 0 to ${conditionKeys.length - 1} ` +
-      'and a finite weight of at least 0';
+      `and a weight from 0 to ${WEIGHT_MAX}`;
     faults.push(fault('malformed-weight', message, remedy));
   }
   const weighted = all.filter(({ weight }) => weight > 0);
   if (weighted.length === 0) {
-    const message = 'No comparison has a weight, so that every design is as good as any other';
+    const message = 'No comparison has a weight, so that all designs are equally good';
     faults.push(fault('nothing-to-minimise', message, 'Give at least one comparison a weight'));
   }
   if (carryover.some(({ weight }) => weight > 0) && !carryoverInModel) {

@@ -40,8 +40,8 @@ const SEARCH_STREAM = 0;
  *
  * Cycles of annealing, each followed by exchange until no single change is better. They go on in
  * turn from the best of some cyclically developed designs, from the best so far, from drawn
- * sequences and from the best so far again, until the budget is used. The result is the best design met; it is
- * never worse than the start, which does not mean that there is no better one.
+ * sequences and from the best so far again, until the budget is used. The result is the best
+ * design met; it is never worse than the start, which does not mean that there is no better one.
  * Sources: Kirkpatrick, Gelatt & Vecchi 1983, Science 220:671–680 (annealing); Jones & Donev 1996,
  * Statistics in Medicine 15:1435–1446 (exchange for cross-over designs).
  *

@@ -85,8 +85,8 @@ export function searchRun(
 
 /**
  * Moves as [period, partner, next]: exchanges of two periods have next −1, replacements have
- * partner p. Where every participant meets every condition exactly as often as allowed there are exchanges
- * only.
+ * partner p. Where every participant meets every condition exactly as often as allowed there are
+ * exchanges only.
  */
 function moveList({ periods, conditionCount, timesMax }: SequenceRules): Int32Array {
   const moves: number[] = [];

@@ -6,7 +6,7 @@ export interface WeightedPair {
   /** Condition indices, different. */
   readonly first: number;
   readonly second: number;
-  /** ≥ 0, finite. */
+  /** From 0 to 10⁹. */
   readonly weight: number;
 }
 
@@ -44,7 +44,7 @@ export interface SearchRequest {
 export interface SearchControls {
   /** Called at most a hundred times, with the share of evaluations used and the best efficiency. */
   readonly onProgress?: (fraction: number, bestEfficiency: number) => void;
-  /** Asked once for every visit to a participant, which is after at most some dozen evaluations. */
+  /** Asked before a participant's moves are weighed and before a design is judged as a whole. */
   readonly shouldStop?: () => boolean;
 }
 
@@ -59,6 +59,7 @@ export interface SearchStep {
 
 export type SearchFaultCode =
   | 'size-out-of-range'
+  | 'repeated-condition'
   | 'malformed-seed'
   | 'malformed-budget'
   | 'malformed-weight'

@@ -31,7 +31,10 @@ export interface SequenceDrawer {
  * which no sequence can be completed are kept over all draws, since they do not depend on the order
  * tried.
  */
-export function sequenceDrawer(rules: SequenceRules): SequenceDrawer {
+export function sequenceDrawer(
+  rules: SequenceRules,
+  beginningsMax = BEGINNINGS_MAX,
+): SequenceDrawer {
   const { conditionCount, periods, allowedIn, mayFollow, required, timesMax } = rules;
   const deadEnds = new Set<string>();
   const limited = timesMax < periods;
@@ -62,7 +65,7 @@ export function sequenceDrawer(rules: SequenceRules): SequenceDrawer {
       if (missing > periods - period) return false;
       if (period === periods) return true;
       looked += 1;
-      if (looked > BEGINNINGS_MAX) return 'undecided';
+      if (looked > beginningsMax) return 'undecided';
       const key = stateKey(period);
       if (deadEnds.has(key)) return false;
       const candidates = shuffled(candidatesIn(period), stream);
@@ -103,7 +106,8 @@ export function shuffled(values: readonly number[], stream: RandomStream): numbe
 /**
  * A smallest set of constraints that already leave no sequence under the limit on times, in that
  * without any one of them the others would leave some: each is dropped for good if the rest
- * contradict too. Empty when the limit on times alone leaves none.
+ * contradict too, within what one draw may look at, shared among them. Empty when the limit on
+ * times alone leaves none.
  *
  * @param limits that together leave no sequence
  */
@@ -114,10 +118,11 @@ export function conflictingConstraints(
   stream: RandomStream,
 ): OrderConstraint[] {
   let kept = [...limits.constraints];
+  const share = Math.ceil(BEGINNINGS_MAX / kept.length);
   for (const constraint of limits.constraints) {
     const without = kept.filter((other) => other !== constraint);
     const rules = sequenceRules({ ...limits, constraints: without }, conditionKeys, periods);
-    if (sequenceDrawer(rules).draw(stream, false) === 'impossible') kept = without;
+    if (sequenceDrawer(rules, share).draw(stream, false) === 'impossible') kept = without;
   }
   return kept;
 }

@@ -4,8 +4,8 @@ import type { OrderConstraint } from '../../protocol/protocol.ts';
 export interface SequenceLimits {
   /**
    * As in a protocol, with two differences, since here a condition may recur or be left out: one
-   * that is "always" in some periods, or first for familiarisation, stands there at least once for every
-   * participant and nowhere else; and a condition may be "never adjacent" to itself.
+   * that is "always" in some periods, or first for familiarisation, stands there at least once for
+   * every participant and nowhere else; and a condition may be "never adjacent" to itself.
    */
   readonly constraints: readonly OrderConstraint[];
   /** How often a participant may meet one condition; absent: any number of times. */
