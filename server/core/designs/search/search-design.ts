@@ -24,13 +24,16 @@ import { type Starts, startsOf } from './starts.ts';
  * Temperature at the beginning of a cycle, as a share of the criterion, times the number of
  * observations: one change alters a share of the criterion that falls with their number.
  */
-const HOTTEST_TIMES_OBSERVATIONS = 0.25;
+const HOTTEST_TIMES_OBSERVATIONS = 0.2;
 
 /**
  * Evaluations of a cycle for each move that the whole design has; as many again go into choosing a
  * developed design to begin with.
  */
-const CYCLE_LENGTH = 40;
+const CYCLE_LENGTH = 80;
+
+/** A cycle takes at most this share of the budget, so that a small one still has several. */
+const CYCLE_SHARE_MAX = 1 / 8;
 
 const SEARCH_STREAM = 0;
 
@@ -66,7 +69,10 @@ export function searchDesign(request: SearchRequest, controls: SearchControls = 
   );
   const run = searchRun(request, moving, rules, stream, controls);
   const hottest = HOTTEST_TIMES_OBSERVATIONS / (sequenceCount * periods);
-  const evaluations = (CYCLE_LENGTH * sequenceCount * run.moves.length) / 3;
+  const evaluations = Math.min(
+    (CYCLE_LENGTH * sequenceCount * run.moves.length) / 3,
+    CYCLE_SHARE_MAX * request.evaluationsMax,
+  );
   exchange(run);
   for (let cycle = 0; run.stoppedBy === null; cycle += 1) {
     if (cycle % 4 === 0) moveToBestDeveloped(run, starts, run.evaluations + evaluations);

@@ -9,8 +9,8 @@ export interface Starts {
   drawn(): Int32Array;
   /**
    * One drawn sequence for every t, and the t − 1 that come of it by adding 1, 2, … to its
-   * condition indices modulo t: each condition equally often in each period. Where such a sequence breaks
-   * a rule, one is drawn in its place.
+   * condition indices modulo t: each condition equally often in each period. Where such a
+   * sequence breaks a rule, one is drawn in its place.
    * Source: Davis & Hall 1969, "Cyclic change-over designs", Biometrika 56:283–293.
    */
   developed(): Int32Array;
