@@ -66,6 +66,7 @@ export const permissions = {
   getParticipant: ['site-coordinator', 'study-lead', 'auditor'],
   getBalance: ['study-lead', 'analyst', 'auditor'],
   replayAllocations: ['study-lead', 'auditor'],
+  estimatePredictability: ['study-lead', 'analyst'],
 
   // trials
   uploadTrials: ['station'],

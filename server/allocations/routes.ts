@@ -2,6 +2,7 @@ import type { FastifyPluginAsync } from 'fastify';
 import type { ZodTypeProvider } from 'fastify-type-provider-zod';
 import { callOf } from '#platform/guard.ts';
 import { PageQuery } from '#platform/paging.ts';
+import { PredictabilityBody, PredictabilityResponse } from './predictability-schemas.ts';
 import * as schemas from './schemas.ts';
 import type { AllocationsService } from './service.ts';
 
@@ -91,6 +92,19 @@ export const allocationsRoutes: FastifyPluginAsync<{ service: AllocationsService
       response: { 200: schemas.ReplayResponse },
     },
     handler: (request) => service.replayAllocations(callOf(request), request.params.studyId),
+  });
+
+  app.route({
+    method: 'POST',
+    url: '/v1/predictability-estimates',
+    schema: {
+      operationId: 'estimatePredictability',
+      tags,
+      summary: 'How often the next sequence can be guessed under each policy, by simulation',
+      body: PredictabilityBody,
+      response: { 200: PredictabilityResponse },
+    },
+    handler: (request) => service.estimatePredictability(request.body),
   });
 
   await app.register(stationRoutes, { service });

@@ -6,6 +6,7 @@ import { getBalance } from './balance.ts';
 import { recordWithdrawal, voidArrival } from './endings.ts';
 import { getParticipant, listParticipants } from './participants.ts';
 import { getDuePeriod, startPeriod } from './periods.ts';
+import { createPredictabilityEstimator } from './predictability.ts';
 import { replayAllocations } from './replays.ts';
 import type { ArrivalBody, PeriodStartBody, VoidBody, WithdrawalBody } from './schemas.ts';
 
@@ -24,7 +25,7 @@ export {
 
 export type AllocationsService = ReturnType<typeof createAllocationsService>;
 
-/** Arrivals, periods, withdrawals, the view of balance and the replay. */
+/** Arrivals, periods, withdrawals, the view of balance, the replay and predictability. */
 export function createAllocationsService(database: Database) {
   return {
     recordArrival: (call: Call, studyId: string, body: ArrivalBody) =>
@@ -52,5 +53,7 @@ export function createAllocationsService(database: Database) {
       getBalance(database, call, studyId, protocolVersion),
 
     replayAllocations: (call: Call, studyId: string) => replayAllocations(database, call, studyId),
+
+    estimatePredictability: createPredictabilityEstimator(),
   };
 }

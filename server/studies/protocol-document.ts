@@ -114,7 +114,7 @@ export const SchemeChoice = z
   ])
   .meta({ id: 'SchemeChoice', description: 'Where the sequences come from' });
 
-const PolicyChoice = z
+export const PolicyChoice = z
   .discriminatedUnion('kind', [
     z
       .strictObject({ kind: z.literal('balanced') })

@@ -4,7 +4,13 @@ import { writtenText } from '#platform/text.ts';
 import { Factor, ProtocolDocument, SchemeChoice } from './protocol-document.ts';
 import { STUDY_STATES } from './visibility.ts';
 
-export { ProtocolDocument, Washout } from './protocol-document.ts';
+export {
+  Factor,
+  PolicyChoice,
+  ProtocolDocument,
+  SchemeChoice,
+  Washout,
+} from './protocol-document.ts';
 
 /** In lower case, as ids are kept and compared. */
 export const StudyId = z.uuid().toLowerCase();

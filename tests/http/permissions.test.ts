@@ -29,6 +29,7 @@ const PLACELESS: readonly Operation[] = [
   'createStudy',
   'listStudies',
   'previewScheme',
+  'estimatePredictability',
 ];
 
 let service: TestService;

@@ -188,6 +188,13 @@ export const exampleRequests: Record<
     return post(`/v1/studies/${id}/replays`);
   },
 
+  estimatePredictability: (place) => {
+    const { withinFactors, scheme, policy } = gloveProtocol(place.siteId);
+    const size = { sites: 2, stationsPerSite: 1, participantsPerSite: 4, studies: 2, imagined: 2 };
+    const plan = { withinFactors, scheme, periods: 2, policies: [policy] };
+    return post('/v1/predictability-estimates', { ...plan, ...size });
+  },
+
   uploadTrials: async (place) => {
     const request = post(study(place, '/uploads'), [trialRow(await freshCode(place))]);
     return { ...request, url: `${request.url}?acceptance=valid-rows` };

@@ -505,6 +505,23 @@ export interface paths {
         patch?: never;
         trace?: never;
     };
+    "/v1/predictability-estimates": {
+        parameters: {
+            query?: never;
+            header?: never;
+            path?: never;
+            cookie?: never;
+        };
+        get?: never;
+        put?: never;
+        /** How often the next sequence can be guessed under each policy, by simulation */
+        post: operations["estimatePredictability"];
+        delete?: never;
+        options?: never;
+        head?: never;
+        patch?: never;
+        trace?: never;
+    };
     "/v1/studies/{studyId}/participants/{code}/due": {
         parameters: {
             query?: never;
@@ -1247,6 +1264,12 @@ export interface components {
             /** @description In order; at least two */
             levels: components["schemas"]["Level"][];
         };
+        GuessedShare: {
+            /** @description Share of slots whose sequence is guessed right, from 0 to 1 */
+            estimate: number;
+            /** @description Of the estimate, from the simulation */
+            standardError: number;
+        };
         Hypothesis: {
             /** @description Lower-case words joined by hyphens */
             key: string;
@@ -1457,6 +1480,49 @@ export interface components {
             };
             /** @description How likely the best sequence is taken; above 0.5, at most 1 */
             bestProbability: number;
+        };
+        PredictabilityBody: {
+            withinFactors: components["schemas"]["Factor"][];
+            /** @default [] */
+            betweenFactors: components["schemas"]["Factor"][];
+            scheme: components["schemas"]["SchemeChoice"];
+            /** @description Number of periods in every sequence */
+            periods: number;
+            /** @description Those to be compared */
+            policies: components["schemas"]["PolicyChoice"][];
+            sites: number;
+            stationsPerSite: number;
+            /** @description At least as many as stations */
+            participantsPerSite: number;
+            /**
+             * @description How many studies are simulated
+             * @default 100
+             */
+            studies: number;
+            /**
+             * @description Studies that the guesser imagines where slots are hidden from it: more, better
+             * @default 32
+             */
+            imagined: number;
+            /** @description 16 lower-case hexadecimal digits; drawn by the service when absent */
+            seed?: string;
+        };
+        PredictabilityEstimate: {
+            /** @description The same seed and body give the same estimates */
+            seed: string;
+            sequences: number;
+            /** @description What chance alone gives: 1 / sequences */
+            chance: number;
+            /** @description In the order of the request */
+            policies: {
+                policy: components["schemas"]["PolicyChoice"];
+                /** @description By somebody who sees one station; attainable */
+                station: components["schemas"]["GuessedShare"];
+                /** @description By somebody who sees all stations of one site; attainable */
+                site: components["schemas"]["GuessedShare"];
+                /** @description By somebody who sees every slot; nobody can do better */
+                study: components["schemas"]["GuessedShare"];
+            }[];
         };
         Problem: {
             /** @enum {string} */
@@ -3376,6 +3442,44 @@ export interface operations {
                 };
                 content: {
                     "application/json": components["schemas"]["AllocationReplay"];
+                };
+            };
+            /** @description Problem details (RFC 9457) */
+            default: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/problem+json": components["schemas"]["Problem"];
+                };
+            };
+        };
+    };
+    estimatePredictability: {
+        parameters: {
+            query?: never;
+            header?: {
+                /** @description The same key and request give the first answer again; nothing is done twice */
+                "idempotency-key"?: string;
+                /** @description Code of the person at the station; a station must send it */
+                "operator-code"?: string;
+            };
+            path?: never;
+            cookie?: never;
+        };
+        requestBody: {
+            content: {
+                "application/json": components["schemas"]["PredictabilityBody"];
+            };
+        };
+        responses: {
+            /** @description Default Response */
+            200: {
+                headers: {
+                    [name: string]: unknown;
+                };
+                content: {
+                    "application/json": components["schemas"]["PredictabilityEstimate"];
                 };
             };
             /** @description Problem details (RFC 9457) */

@@ -2,9 +2,9 @@ import { DomainError } from '../errors.ts';
 import type { Minimisation, PolicyChoice } from '../protocol/protocol.ts';
 import type { Chance } from './keyed-draw.ts';
 import { minimisedSequence, type WeightedMargin } from './minimisation.ts';
-import { nextSequence } from './next-sequence.ts';
+import { type IssuedTallies, nextSequence } from './next-sequence.ts';
 import { type CompleteBlocks, NO_BLOCKS, nextInBlock, openBlock } from './permuted-blocks.ts';
-import { addToTally, emptyTally, type SequenceSet, type Tally } from './tally.ts';
+import { addToTally, copyTally, emptyTally, type SequenceSet, type Tally } from './tally.ts';
 
 /** What one protocol version hands out, and by which rule. */
 export interface AllocationPlan {
@@ -115,19 +115,11 @@ function pickNext(
   const { siteId, stratum, slotNumber } = slot;
   const { set, policy } = plan;
   const draw = chance.slot(siteId, slotNumber);
-  const cell = cellIn(ledger, siteId, stratum);
   switch (policy.kind) {
-    case 'balanced': {
-      const site = tallyIn(ledger.sites, siteId, set);
-      const issued = {
-        cell,
-        site,
-        stratum: tallyIn(ledger.strata, stratum, set),
-        study: ledger.study,
-      };
-      return nextSequence({ set, issued, draw });
-    }
+    case 'balanced':
+      return nextSequence({ set, issued: issuedTallies(ledger, slot), draw });
     case 'permuted-blocks': {
+      const cell = cellIn(ledger, siteId, stratum);
       const complete = mapIn(ledger.blocks, siteId);
       const block = openBlock({
         cell,
@@ -143,6 +135,38 @@ function pickNext(
       return minimisedSequence({ sequenceCount: set.sequences.length, margins, policy, draw });
     }
   }
+}
+
+/** What has been issued as an arrival there sees it. Not copied: it changes with the ledger. */
+export function issuedTallies(
+  ledger: AllocationLedger,
+  { siteId, stratum }: { readonly siteId: string; readonly stratum: string },
+): IssuedTallies {
+  const { set } = ledger.plan;
+  return {
+    cell: cellIn(ledger, siteId, stratum),
+    site: tallyIn(ledger.sites, siteId, set),
+    stratum: tallyIn(ledger.strata, stratum, set),
+    study: ledger.study,
+  };
+}
+
+/** A ledger with the same counts, which changes apart from the first. */
+export function copyLedger(ledger: AllocationLedger): AllocationLedger {
+  const inner = <Value>(maps: Map<string, Map<string, Value>>, copy: (value: Value) => Value) =>
+    copyMap(maps, (map) => copyMap(map, copy));
+  return {
+    ...ledger,
+    cells: inner(ledger.cells, (cell) => cell.slice()),
+    sites: copyMap(ledger.sites, copyTally),
+    strata: copyMap(ledger.strata, copyTally),
+    study: copyTally(ledger.study),
+    blocks: inner(ledger.blocks, (complete) => complete),
+  };
+}
+
+function copyMap<Value>(map: Map<string, Value>, copy: (value: Value) => Value) {
+  return new Map(Array.from(map, ([key, value]): [string, Value] => [key, copy(value)]));
 }
 
 /** What minimisation keeps even for an arrival: its site, its level of each factor, the study. */

@@ -53,7 +53,21 @@ export function nextSequence(input: {
   readonly issued: IssuedTallies;
   readonly draw: Draw;
 }): { sequenceIndex: number; drawsUsed: number } {
-  const { set, issued, draw } = input;
+  const candidates = balancedCandidates(input);
+  const { value, drawsUsed } = uniformBelow(candidates.length, input.draw);
+  return { sequenceIndex: candidates[value] ?? 0, drawsUsed };
+}
+
+/**
+ * The sequences among which `nextSequence` draws, each equally likely: its steps 1 to 6.
+ *
+ * @throws {DomainError} when there are no sequences or a count array has another length
+ */
+export function balancedCandidates(input: {
+  readonly set: SequenceSet;
+  readonly issued: IssuedTallies;
+}): number[] {
+  const { set, issued } = input;
   const { cell, site, stratum, study } = issued;
   const sequenceCount = set.sequences.length;
   if (sequenceCount === 0) throw new DomainError('There are no sequences to hand out');
@@ -69,8 +83,7 @@ export function nextSequence(input: {
   for (const tally of [site, study]) {
     candidates = smallest(candidates, (index) => crowding(tally, set, index));
   }
-  const { value, drawsUsed } = uniformBelow(candidates.length, draw);
-  return { sequenceIndex: candidates[value] ?? 0, drawsUsed };
+  return candidates;
 }
 
 /** The candidates with the smallest measure, in their order; each is measured once. */

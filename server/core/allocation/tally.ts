@@ -30,6 +30,11 @@ export function emptyTally(set: SequenceSet): Tally {
   };
 }
 
+/** A tally with the same counts, which changes apart from the first. */
+export function copyTally({ counts, byPeriod, byPair }: Tally): Tally {
+  return { counts: counts.slice(), byPeriod: byPeriod.slice(), byPair: byPair.slice() };
+}
+
 /**
  * The tally of given counts by sequence.
  *

@@ -8,7 +8,9 @@ export const CONDITIONS_MAX = 64;
 export const STRATA_MAX = 256;
 
 /** Faults of the within and between factors: keys, numbers of levels, conditions and strata. */
-export function factorFaults(protocol: Protocol): ProtocolFault[] {
+export function factorFaults(
+  protocol: Pick<Protocol, 'withinFactors' | 'betweenFactors'>,
+): ProtocolFault[] {
   const { withinFactors, betweenFactors } = protocol;
   const faults: ProtocolFault[] = [
     ...withinFactorFaults(withinFactors),

@@ -26,8 +26,8 @@ function minimisationText({ imbalance, weights, bestProbability }: Minimisation)
     `study ${weights.study}`,
   ];
   return (
-    `minimisation of the ${imbalance} of counts by sequence (weights: ${margins.join(', ')}); the ` +
-    `best sequence was taken with probability ${percentText(bestProbability)}; no bound on a ` +
+    `minimisation of the ${imbalance} of counts by sequence (weights: ${margins.join(', ')}); ` +
+    `the best sequence was taken with probability ${percentText(bestProbability)}; no bound on a ` +
     'difference of counts was promised, and cells of site and stratum were not kept even'
   );
 }
