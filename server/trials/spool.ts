@@ -20,8 +20,8 @@ const BYTE_ORDER_MARK = Buffer.from([0xef, 0xbb, 0xbf]);
 
 /**
  * Receives a body into a file that has no name any more, so that nothing of it stays behind
- * whatever happens, and that nobody else can open. The database is asked for nothing meanwhile: a slow
- * sender holds neither a connection nor a lock.
+ * whatever happens, and that nobody else can open. The database is asked for nothing meanwhile: a
+ * slow sender holds neither a connection nor a lock.
  *
  * @throws {ProblemError} `payload-too-large` above `bytesMax`; `invalid-request` when the sender
  *   breaks off
