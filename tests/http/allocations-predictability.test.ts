@@ -114,15 +114,18 @@ describe('what cannot be estimated', () => {
     ]);
   });
 
-  it('is named: too few participants, too much work, a seed of another form', async () => {
+  it('is named: too few participants, too much work or memory, a malformed seed', async () => {
     expect(await faultsOf({ participantsPerSite: 2, stationsPerSite: 3 })).toEqual([
       400,
       '/participantsPerSite fewer-participants-than-stations',
     ]);
-    expect(await faultsOf({ studies: 1000, imagined: 256, sites: 50 })).toEqual([
+    expect(await faultsOf({ studies: 1000, imagined: 64, sites: 50 })).toEqual([
       400,
       '/studies too-much-work',
     ]);
+    expect(
+      await faultsOf({ studies: 2, imagined: 256, sites: 50, participantsPerSite: 2 }),
+    ).toEqual([400, '/imagined too-much-memory']);
     expect((await faultsOf({ seed: 'ABC' }))[0]).toBe(400);
     expect((await faultsOf({ policies: [] }))[0]).toBe(400);
   });
