@@ -14,6 +14,7 @@ import { EmbeddedPostgresError } from '#platform/postgres-programs.ts';
 import { startWorkerProcesses } from '#platform/worker-processes.ts';
 import { ensureFirstAdministrator } from '#server/access/service.ts';
 import { buildApp } from '#server/app.ts';
+import { ensureSigningKey } from '#server/audit/service.ts';
 
 /** What was opened, to be closed in the reverse order. */
 type Closers = (() => Promise<void>)[];
@@ -99,8 +100,9 @@ async function open(opening: Opening): Promise<void> {
   });
   if (applied.length > 0) logger.info({ applied }, 'migrations applied');
 
-  const database = await openDatabase({ url, poolSize: config.databasePoolSize });
+  const database = openDatabase({ url, poolSize: config.databasePoolSize });
   closers.push(() => closeDatabase(database));
+  await database.inSqlTransaction(ensureSigningKey);
   const first = await ensureFirstAdministrator(database);
   if (first !== null) showFirstToken(first.token);
 

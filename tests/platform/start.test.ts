@@ -127,6 +127,21 @@ describe('node server/main.ts', () => {
     expect(first.program.output() + second.program.output()).not.toContain(password);
   });
 
+  test('makes the key that signs checkpoints at its first start, and keeps it', async () => {
+    const folder = temporaryFolder();
+    const keys: string[] = [];
+    for (let start = 1; start <= 2; start += 1) {
+      const service = await startService(folder);
+      const sql = connectTo(folder);
+      const rows = await sql`select encode(sha256(material), 'hex') as print from service_keys`;
+      keys.push(...rows.map((row) => String(row.print)));
+      await sql.end();
+      await stop(service, 'SIGTERM');
+    }
+    expect(keys).toHaveLength(2);
+    expect(keys[0]).toBe(keys[1]);
+  });
+
   test('starts again after kill -9, with what it knew', async () => {
     const folder = temporaryFolder();
     const first = await startService(folder, { FAIRTURN_WORKERS: '1' });
