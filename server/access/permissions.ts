@@ -1,13 +1,4 @@
-import type { Role } from '#platform/call.ts';
-
-const everyone = [
-  'administrator',
-  'study-lead',
-  'site-coordinator',
-  'station',
-  'analyst',
-  'auditor',
-] as const;
+import { ROLES, type Role } from '#platform/call.ts';
 
 /**
  * Who may do what: one line an operation of openapi.yaml. The guard reads this table before every
@@ -31,10 +22,10 @@ export const permissions = {
   createToken: ['administrator', 'study-lead', 'site-coordinator'],
   listTokens: ['administrator', 'study-lead', 'site-coordinator', 'auditor'],
   revokeToken: ['administrator', 'study-lead', 'site-coordinator'],
-  getOwnToken: everyone,
+  getOwnToken: ROLES,
 
   // audit
-  getAuditPublicKey: everyone,
+  getAuditPublicKey: ROLES,
   listAuditEntries: ['administrator', 'study-lead', 'auditor'],
   makeCheckpoint: ['administrator', 'study-lead', 'auditor'],
   listCheckpoints: ['administrator', 'study-lead', 'auditor'],
@@ -42,8 +33,8 @@ export const permissions = {
 
   // studies
   createStudy: ['study-lead'],
-  listStudies: everyone,
-  getStudy: everyone,
+  listStudies: ROLES,
+  getStudy: ROLES,
   getProtocolDraft: ['study-lead', 'analyst', 'auditor'],
   putProtocolDraft: ['study-lead'],
   checkProtocolDraft: ['study-lead', 'analyst'],

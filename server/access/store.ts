@@ -147,3 +147,8 @@ export function updateAccountTokensRevoked(tx: RecordsTransaction, accountId: st
 export function countTokens(tx: RecordsTransaction) {
   return tx.token.count();
 }
+
+/** Held until the transaction ends; nobody else makes a first administrator meanwhile. */
+export async function lockFirstStart(tx: RecordsTransaction): Promise<void> {
+  await tx.$executeRaw`select pg_advisory_xact_lock(hashtext('fairturn-first-administrator'))`;
+}

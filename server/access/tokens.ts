@@ -174,7 +174,7 @@ function reachesToken(
 export function ensureFirstAdministrator(database: Database): Promise<{ token: string } | null> {
   return database.inRecordsTransaction(async (tx) => {
     // Two servers starting at once on an empty database: the second waits, then finds a token.
-    await tx.$executeRaw`select pg_advisory_xact_lock(hashtext('fairturn-first-administrator'))`;
+    await store.lockFirstStart(tx);
     if ((await store.countTokens(tx)) > 0) return null;
     const now = new Date();
     const account = await store.insertAccount(tx, {

@@ -41,10 +41,9 @@ export async function freezeSnapshot(
   analysis: store.TakenAnalysis,
 ): Promise<string | null> {
   for (let reading = 1; reading <= READINGS_MAX; reading += 1) {
-    const study = await database.inSqlTransaction(async (tx) => {
-      await tx`set transaction isolation level repeatable read, read only`;
-      return await readStudy(tx, database.records, analysis);
-    });
+    const study = await database.inReadingTransaction((tx) =>
+      readStudy(tx, database.records, analysis),
+    );
     const { body, contents } = splitSnapshot(study.snapshot, () => randomBytes(SALT_BYTES));
     const stored = await database.inSqlTransaction((tx) =>
       storeSnapshot(tx, analysis, { study, body, contents }),

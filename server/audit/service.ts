@@ -94,11 +94,8 @@ export function createAuditService({ database, maySeeStudy }: AuditOptions) {
     ): Promise<VerificationResponse> => {
       const key = await database.inSqlTransaction((tx) => ensureSigningKey(tx));
       const chains = await visibleChains(call, checkpoint);
-      return await database.inSqlTransaction(async (tx) => {
-        // Entries and heads as of one moment, whatever is appended meanwhile.
-        await tx`set transaction isolation level repeatable read`;
-        return await verifyChains(tx, key, chains, checkpoint);
-      });
+      // Entries and heads as of one moment, whatever is appended meanwhile.
+      return await database.inReadingTransaction((tx) => verifyChains(tx, key, chains, checkpoint));
     },
   };
 

@@ -26,6 +26,8 @@ export interface Database {
   readonly sql: postgres.Sql;
   inRecordsTransaction<T>(work: (tx: RecordsTransaction) => Promise<T>): Promise<T>;
   inSqlTransaction<T>(work: (tx: SqlTransaction) => Promise<T>): Promise<T>;
+  /** Reads as of one moment, whatever is committed meanwhile; refuses to write. */
+  inReadingTransaction<T>(work: (tx: SqlTransaction) => Promise<T>): Promise<T>;
   /** Resolves when the database answers; rejects otherwise. */
   ping(): Promise<void>;
   close(): Promise<void>;
@@ -55,15 +57,9 @@ export function openDatabase(options: { url: string; poolSize: number }): Databa
     sql,
     inRecordsTransaction: (work) =>
       retrying(() => records.$transaction(work, { maxWait: 30_000, timeout: 60_000 })),
-    inSqlTransaction: <T>(work: (tx: SqlTransaction) => Promise<T>) =>
-      retrying<T>(async () => {
-        let result: { value: T } | undefined;
-        await sql.begin(async (tx) => {
-          result = { value: await work(tx) };
-        });
-        if (result === undefined) throw new Error('The transaction ended without a result.');
-        return result.value;
-      }),
+    inSqlTransaction: (work) => retrying(() => inTransaction(sql, '', work)),
+    inReadingTransaction: (work) =>
+      retrying(() => inTransaction(sql, 'isolation level repeatable read read only', work)),
     ping: async () => {
       await sql`select 1`;
     },
@@ -85,6 +81,20 @@ export function sqlExecutor(tx: SqlTransaction): Executor {
   return {
     query: async (text, values) => [...(await tx.unsafe(text, [...values]))],
   };
+}
+
+/** The driver's own type of what `begin` gives back unwraps arrays: the result is kept aside. */
+async function inTransaction<T>(
+  sql: postgres.Sql,
+  mode: string,
+  work: (tx: SqlTransaction) => Promise<T>,
+): Promise<T> {
+  let result: { value: T } | undefined;
+  await sql.begin(mode, async (tx) => {
+    result = { value: await work(tx) };
+  });
+  if (result === undefined) throw new Error('The transaction ended without a result.');
+  return result.value;
 }
 
 async function retrying<T>(attempt: () => Promise<T>): Promise<T> {

@@ -47,11 +47,8 @@ export async function exportTrials(
   const stream = new PassThrough();
   const texts = (tx: SqlTransaction) => exportTexts(tx, study, { mediaType, versions });
   database
-    .inSqlTransaction(async (tx) => {
-      // One moment for participants and trials.
-      await tx`set transaction isolation level repeatable read, read only`;
-      await pipeline(Readable.from(texts(tx)), stream);
-    })
+    // One moment for participants and trials.
+    .inReadingTransaction((tx) => pipeline(Readable.from(texts(tx)), stream))
     .catch((error: unknown) => {
       stream.destroy(error instanceof Error ? error : new Error('The export failed.'));
     });

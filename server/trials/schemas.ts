@@ -1,5 +1,5 @@
 import { z } from 'zod';
-import { PageQuery, pageOf } from '#platform/paging.ts';
+import { pageOf } from '#platform/paging.ts';
 import { text, writtenText } from '#platform/text.ts';
 import { Reason, StudyId } from '#server/studies/schemas.ts';
 import { NOTE_MAX, RECORD_ID_MAX } from './read-fields.ts';
@@ -131,8 +131,6 @@ export const RefusedRow = z
   .meta({ id: 'RefusedRow' });
 export const RefusedRowPage = pageOf(RefusedRow).meta({ id: 'RefusedRowPage' });
 export const StoredFaults = z.array(RowFault);
-
-export const UploadPageQuery = PageQuery;
 
 export const CorrectionBody = z
   .strictObject({

@@ -1,5 +1,5 @@
 import { studentTSurvivalQuantile } from '../distributions/student-t.ts';
-import { notEstimable } from '../estimability.ts';
+import { completeTableFault } from '../models/complete-table.ts';
 import { assertConfidenceLevel } from '../numerics/confidence-level.ts';
 import { largestMagnitude } from '../numerics/magnitude.ts';
 import type { Matrix } from '../numerics/matrix.ts';
@@ -23,21 +23,8 @@ export function withinParticipantIntervals(
 ): WithinParticipantIntervals {
   assertConfidenceLevel(confidenceLevel);
   const { rows: participants, columns: conditions, values } = table;
-  if (conditions < 2) {
-    return notEstimable(
-      'too-few-conditions',
-      `Two conditions are needed; there are ${conditions}.`,
-    );
-  }
-  if (participants < 2) {
-    return notEstimable(
-      'too-few-participants',
-      `Two participants are needed; there are ${participants}.`,
-    );
-  }
-  if (values.some(Number.isNaN)) {
-    return notEstimable('incomplete-data', 'Every participant needs a value in every condition.');
-  }
+  const fault = completeTableFault(table);
+  if (fault !== null) return fault;
   largestMagnitude(values);
   // The grand mean added back to every value would not change a variance: it is left out.
   const normalised = Float64Array.from(values);

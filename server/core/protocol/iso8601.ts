@@ -57,13 +57,3 @@ export function parseDuration(text: string): number {
   if (total > DURATION_MS_MAX) throw new DomainError(`"${text}" is longer than 100,000 days`);
   return Math.round(total);
 }
-
-/**
- * Orders two ISO 8601 durations by length.
- *
- * @returns negative when the first is shorter, 0 when both last equally long, positive otherwise
- * @throws {DomainError} as `parseDuration` does
- */
-export function compareDurations(first: string, second: string): number {
-  return parseDuration(first) - parseDuration(second);
-}

@@ -2,6 +2,7 @@ import { chiSquareSurvival } from '../distributions/chi-square.ts';
 import { fisherFSurvival } from '../distributions/fisher-f.ts';
 import { DomainError } from '../errors.ts';
 import { notEstimable } from '../estimability.ts';
+import { completeTableFault } from '../models/complete-table.ts';
 import type { Matrix } from '../numerics/matrix.ts';
 import { midRanks } from './mid-ranks.ts';
 import type { FriedmanTest } from './rank-types.ts';
@@ -28,21 +29,8 @@ export function friedmanTest(table: Matrix): FriedmanTest {
   if (values.some((value) => Math.abs(value) === Number.POSITIVE_INFINITY)) {
     throw new DomainError('A table of measurements holds an infinite value.');
   }
-  if (conditions < 2) {
-    return notEstimable(
-      'too-few-conditions',
-      `Two conditions are needed; there are ${conditions}.`,
-    );
-  }
-  if (participants < 2) {
-    return notEstimable(
-      'too-few-participants',
-      `Two participants are needed; there are ${participants}.`,
-    );
-  }
-  if (values.some(Number.isNaN)) {
-    return notEstimable('incomplete-data', 'Every participant needs a value in every condition.');
-  }
+  const fault = completeTableFault(table);
+  if (fault !== null) return fault;
   // Twice the ranks are whole numbers, so sums are exact in any order of participants.
   const doubledSums = new Float64Array(conditions);
   let tieTerm = 0;

@@ -1,5 +1,5 @@
 import { describe, expect, it } from 'vitest';
-import { compareDurations, parseDuration } from '#core/protocol/iso8601.ts';
+import { parseDuration } from '#core/protocol/iso8601.ts';
 
 describe('a duration', () => {
   // published: ISO 8601-1:2019, 5.5.2 gives the components; their lengths are SI and the 7-day week
@@ -52,12 +52,5 @@ describe('a duration', () => {
   it('is not longer than a study could be', () => {
     expect(() => parseDuration('P100001D')).toThrow(/100,000 days/);
     expect(() => parseDuration(`P${'9'.repeat(400)}D`)).toThrow(/100,000 days/);
-  });
-
-  it('compares by length, however it is written', () => {
-    expect(compareDurations('P7D', 'P1W')).toBe(0);
-    expect(compareDurations('PT23H', 'P1D')).toBeLessThan(0);
-    expect(compareDurations('PT25H', 'P1D')).toBeGreaterThan(0);
-    expect(() => compareDurations('P1D', 'P1M')).toThrow(/years or months/);
   });
 });
